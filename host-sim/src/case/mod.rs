@@ -1,0 +1,2 @@
+//! Grid and play files.
+pub mod model;

@@ -1,0 +1,2 @@
+//! The `hedgerow` program: parse, dispatch, map errors to exit codes.
+fn main() {}

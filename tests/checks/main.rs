@@ -1,0 +1,2 @@
+//! x
+use hedgerow as _; use clarabel as _;
