@@ -1,2 +1,3 @@
 //! x
-use hedgerow as _; use clarabel as _;
+use clarabel as _;
+use hedgerow as _;
