@@ -1,0 +1,219 @@
+//! The steward's own trial: candidate duals, ranges to try them on, and the proof that stands.
+//!
+//! Contract: `hard` speaks of this rung with all the help that could come,
+//! `conditional` of what the neighbours deliver now. Both rest on
+//! [`verdict::shortfall`](crate::verdict::shortfall) alone. The proof kept is the
+//! one with the largest proven shortfall of this tick.
+
+use super::Steward;
+use super::ranges::{Boxes, between};
+use crate::law::kernel::{abs, max_abs};
+use crate::neighbour::TieEnd;
+use crate::verdict::{Product, Ranges, Rows, dust, shortfall};
+use hedgerow_protocol::message::Rung;
+
+/// Slack added to the range between two ends, pu: they never agree to the bit.
+const BETWEEN_SLACK: f32 = 0.001;
+/// A neighbour's value counts as steady within this of its own low-pass, pu.
+const STEADY: f32 = 0.03;
+/// Without open ties a dual this large, as a share of the clamp, may be left from an old need.
+const STALE_SHARE: f32 = 0.25;
+/// ... if the rows are this far from any proof, pu.
+const STALE_SLACK: f32 = -0.05;
+/// Seconds between two resets.
+const STALE_PAUSE_S: f32 = 5.0;
+
+/// The strongest proof of a tick.
+#[derive(Clone, Debug)]
+pub struct Proof<const X: usize, const R: usize> {
+    /// Dual vector, physical rows.
+    pub dual: [f32; R],
+    /// Ranges it speaks of.
+    pub boxes: Boxes<X>,
+    /// Proven shortfall, pu.
+    pub shortfall: f32,
+}
+
+/// What the trial carries from tick to tick.
+#[derive(Clone, Debug)]
+pub struct Judgement<const X: usize, const R: usize> {
+    last: [f32; R],
+    pause_ticks: u16,
+    /// Shortfall proven in this tick with all the help that could come, pu.
+    pub proven: f32,
+    /// Estimation errors allowed for in this tick.
+    pub error: [f32; R],
+    /// Row limits of this tick, pu (the shadow narrows the problem's own afterwards).
+    pub row_low: [f32; R],
+    /// Upper row limits of this tick, pu.
+    pub row_high: [f32; R],
+    /// Rung the trial speaks of.
+    pub rung: Rung,
+    /// The strongest proof of this tick.
+    pub proof: Proof<X, R>,
+}
+
+impl<const X: usize, const R: usize> Judgement<X, R> {
+    /// Nothing tried yet.
+    pub const fn new() -> Self {
+        Self {
+            last: [0.0; R],
+            pause_ticks: 0,
+            proven: -1.0,
+            error: [0.0; R],
+            row_low: [0.0; R],
+            row_high: [0.0; R],
+            rung: Rung::Keep,
+            proof: Proof {
+                dual: [0.0; R],
+                boxes: Boxes::new(),
+                shortfall: -1.0,
+            },
+        }
+    }
+}
+
+impl<const X: usize, const R: usize> Default for Judgement<X, R> {
+    fn default() -> Self {
+        Self::new()
+    }
+}
+
+impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
+    /// Try this tick's duals: (proven with all help, proven with what is delivered).
+    pub(super) fn judge(&mut self, clear: bool) -> (bool, bool) {
+        let mut dual = [0.0; R];
+        self.scaled.physical_dual(&self.main.y, &mut dual);
+        let mut difference = dual;
+        for (value, last) in difference.iter_mut().zip(&self.judgement.last) {
+            *value -= last;
+        }
+        self.judgement.last = dual;
+        self.judgement.proven = -1.0;
+        self.judgement.proof.shortfall = -1.0;
+        self.judgement.error = [0.0; R];
+        self.judgement.row_low = self.problem.row_low;
+        self.judgement.row_high = self.problem.row_high;
+        self.judgement.rung = self.ladder.rung();
+        if !clear {
+            return (false, false);
+        }
+        self.rows
+            .errors(&self.plan, &self.estimate, &mut self.judgement.error);
+        let most = self.with_all_help();
+        let (between, theirs) = self.with_help_delivered();
+        let leaning = self.ladder.rung() != Rung::Keep;
+        let threshold = self.plan.settings.proof_threshold;
+        let (mut hard, mut conditional) = (false, false);
+        for candidate in [&mut dual, &mut difference] {
+            dust(candidate);
+            let proven = self.try_on(candidate, &most);
+            self.judgement.proven = crate::law::kernel::max(proven, self.judgement.proven);
+            hard |= proven > threshold;
+            for boxes in [Some(&between), theirs.as_ref()].into_iter().flatten() {
+                conditional |= leaning && self.try_on(candidate, boxes) > threshold;
+            }
+        }
+        self.drop_stale_dual(&most);
+        (hard, conditional)
+    }
+
+    /// Shortfall that a dual vector proves on some ranges; the strongest is kept as the proof.
+    fn try_on(&mut self, dual: &[f32; R], boxes: &Boxes<X>) -> f32 {
+        let (mut column, mut magnitude) = ([0.0; X], [0.0; X]);
+        self.rows
+            .product(&self.plan, &self.network, dual, &mut column, &mut magnitude);
+        // Only what is in use: the rounding bound must not depend on the build's capacity.
+        let (rows, cols) = (self.plan.rows(), self.plan.cols());
+        let product = Product {
+            column: head(&column, cols),
+            magnitude: head(&magnitude, cols),
+        };
+        let limits = Rows {
+            low: head(&self.judgement.row_low, rows),
+            high: head(&self.judgement.row_high, rows),
+            error: head(&self.judgement.error, rows),
+        };
+        let ranges = Ranges {
+            low: head(&boxes.low, cols),
+            high: head(&boxes.high, cols),
+        };
+        let proven = shortfall(head(dual, rows), product, limits, ranges);
+        if proven > self.judgement.proof.shortfall {
+            let boxes = boxes.clone();
+            self.judgement.proof = Proof {
+                dual: *dual,
+                boxes,
+                shortfall: proven,
+            };
+        }
+        proven
+    }
+
+    /// Ranges of this rung with every tie that could be open counted as open.
+    fn with_all_help(&self) -> Boxes<X> {
+        let schedule = self.schedules();
+        let asks = self.asks();
+        let mut boxes = self.boxes.clone();
+        let could = |index: usize| {
+            let open = self.open.get(index).copied().unwrap_or(false);
+            let pending = |end: &TieEnd| end.is_pending(asks, &self.plan.settings);
+            open || self.ends.get(index).is_some_and(pending)
+        };
+        self.view(&schedule).ties(could, &mut boxes);
+        boxes
+    }
+
+    /// Ranges narrowed to what the neighbours deliver: between the two ends'
+    /// values, and close to the neighbour's own value if that is steady.
+    fn with_help_delivered(&self) -> (Boxes<X>, Option<Boxes<X>>) {
+        let schedule = self.schedules();
+        let view = self.view(&schedule);
+        let settings = &self.plan.settings;
+        let (mut middle, mut theirs) = (self.boxes.clone(), self.boxes.clone());
+        let mut steady = true;
+        for (index, end) in self.ends.iter().enumerate().take(self.plan.ties.len()) {
+            if !self.open.get(index).copied().unwrap_or(false) {
+                continue;
+            }
+            let Some(said) = end.theirs(settings.neighbour_ticks) else {
+                continue;
+            };
+            let (mean, half) = between(end.deviation(), said.deviation);
+            let slack = half.map(|half| half + BETWEEN_SLACK);
+            view.pin_tie(index, mean, slack, &mut middle);
+            let exact = [settings.proof_threshold; 2];
+            view.pin_tie(index, said.deviation, exact, &mut theirs);
+            let [flow, _] = said.deviation;
+            steady &= abs(flow - end.trend()) < STEADY;
+        }
+        (middle, steady.then_some(theirs))
+    }
+
+    /// After a long impossible spell the duals may be far out; without open ties
+    /// (whose price may be what drives them) they are dropped once the rows are
+    /// far from any proof.
+    fn drop_stale_dual(&mut self, most: &Boxes<X>) {
+        self.judgement.pause_ticks = self.judgement.pause_ticks.saturating_sub(1);
+        let settings = self.plan.settings;
+        let large = max_abs(&self.main.y) > STALE_SHARE * settings.dual_clamp;
+        if !large || self.open.contains(&true) || self.judgement.pause_ticks > 0 {
+            return;
+        }
+        let mut dual = [0.0; R];
+        self.scaled.physical_dual(&self.main.y, &mut dual);
+        let kept = (self.judgement.error, self.judgement.proof.clone());
+        self.judgement.error = [0.0; R];
+        let plain = self.try_on(&dual, most);
+        (self.judgement.error, self.judgement.proof) = kept;
+        if plain < STALE_SLACK {
+            self.main.reset();
+            self.judgement.pause_ticks = (STALE_PAUSE_S / settings.tick_s) as u16;
+        }
+    }
+}
+
+/// The first `count` values, or as many as there are.
+fn head(values: &[f32], count: usize) -> &[f32] {
+    values.get(..count).unwrap_or(values)
+}

@@ -1,0 +1,674 @@
+//! The steward of one area: sans-IO, one call per tick.
+//!
+//! Contract: [`Steward::load`] takes a charter, [`Steward::hear`] a decoded
+//! message, [`Steward::tick`] moves one tick on and says what must be said.
+//! Every set-point said is inside the range of its rung, whatever was heard.
+//!
+//! Order of a tick: statuses; ramps of schedules and base points; who helps;
+//! estimates; ranges, and a new scaling if rows or open columns changed; limits;
+//! the law; feeders; verdict; shadow; ladder; messages.
+
+mod feeders;
+mod judgement;
+mod ranges;
+mod rows;
+mod say;
+
+pub use say::Say;
+
+use crate::ladder::{Finding, Ladder, Move};
+use crate::law::kernel::{abs, at, clip, max, put};
+use crate::law::scale::Column;
+use crate::law::{Iterate, Limits, Problem, Scaled};
+use crate::measure::{AGE_MAX, Estimate, Measured, Sight};
+use crate::neighbour::{self, NOBODY, TieEnd};
+use crate::network::{Change, Network};
+use crate::plan::Plan;
+use feeders::{FeederTick, Feeders};
+use hedgerow_protocol::limits::TIES_MAX;
+use hedgerow_protocol::message::{Message, Refusal, Rung, Verdict};
+use judgement::Judgement;
+use ranges::{Boxes, View};
+use rows::Rows;
+
+/// A set-point that moves less than this in a tick stands still, pu (0.01 MW on 100 MVA).
+const STILL: f32 = 1e-4;
+/// Frequency deviation below which an area counts as at rest, Hz.
+const REST_HZ: f32 = 1e-3;
+
+/// A value on its way to another.
+#[derive(Clone, Copy, Debug, PartialEq)]
+struct Ramped {
+    now: f32,
+    goal: f32,
+    ticks_left: u32,
+}
+
+impl Ramped {
+    const fn at(value: f32) -> Self {
+        Self {
+            now: value,
+            goal: value,
+            ticks_left: 0,
+        }
+    }
+
+    fn go(&mut self, goal: f32, ticks: u32) {
+        self.goal = goal;
+        self.ticks_left = ticks;
+        if ticks == 0 {
+            self.now = goal;
+        }
+    }
+
+    fn pass(&mut self) {
+        if self.ticks_left > 0 {
+            self.now += (self.goal - self.now) / self.ticks_left as f32;
+            self.ticks_left -= 1;
+        }
+        if self.ticks_left == 0 {
+            self.now = self.goal;
+        }
+    }
+}
+
+/// The controller of one area. At most B buses, X unknowns, R rows.
+#[derive(Clone, Debug)]
+pub struct Steward<const B: usize, const X: usize, const R: usize> {
+    plan: Plan<B, X, R>,
+    ready: bool,
+    network: Network<B, R>,
+    measured: Measured<B, X, R>,
+    missed_ticks: u16,
+    estimate: Estimate<R>,
+    rows: Rows,
+    tie_closed: [bool; TIES_MAX],
+    unit_on: [bool; X],
+    schedule: [Ramped; TIES_MAX],
+    base: [Ramped; X],
+    ends: [TieEnd; TIES_MAX],
+    open: [bool; TIES_MAX],
+    distance: u8,
+    boxes: Boxes<X>,
+    kinds: [Column; X],
+    scaled: Scaled<X, R>,
+    problem: Problem<X, R>,
+    limits: Limits<X, R>,
+    main: Iterate<X, R>,
+    shadow: Iterate<X, R>,
+    feeders: Feeders<X>,
+    setpoint: [f32; X],
+    judgement: Judgement<X, R>,
+    ladder: Ladder,
+    proofs: u16,
+    verdict: Verdict,
+}
+
+impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
+    /// A steward without a charter.
+    pub const fn new() -> Self {
+        Self {
+            plan: Plan::new(),
+            ready: false,
+            network: Network::new(),
+            measured: Measured::new(),
+            missed_ticks: 0,
+            estimate: Estimate::new(),
+            rows: Rows::new(),
+            tie_closed: [false; TIES_MAX],
+            unit_on: [false; X],
+            schedule: [Ramped::at(0.0); TIES_MAX],
+            base: [Ramped::at(0.0); X],
+            ends: [TieEnd::new(); TIES_MAX],
+            open: [false; TIES_MAX],
+            distance: NOBODY,
+            boxes: Boxes::new(),
+            kinds: [Column::Closed; X],
+            scaled: Scaled::new(),
+            problem: Problem::new(),
+            limits: Limits::new(),
+            main: Iterate::new(),
+            shadow: Iterate::new(),
+            feeders: Feeders::new(),
+            setpoint: [0.0; X],
+            judgement: Judgement::new(),
+            ladder: Ladder::new(),
+            proofs: 0,
+            verdict: Verdict::Blind,
+        }
+    }
+
+    /// Boot with a charter; what was known before is forgotten.
+    ///
+    /// Errors: why the charter is refused; the steward then has none.
+    pub fn load(&mut self, charter: &[u8]) -> Result<(), Refusal> {
+        self.ready = false;
+        self.plan.load(charter)?;
+        self.network.start(&self.plan);
+        self.measured.start(&self.plan);
+        self.missed_ticks = 0;
+        self.estimate = Estimate::new();
+        self.tie_closed = self.measured.tie_closed;
+        self.unit_on = self.measured.unit_in_service;
+        for (schedule, tie) in self.schedule.iter_mut().zip(&self.plan.ties) {
+            *schedule = Ramped::at(tie.schedule);
+        }
+        for (index, (base, unit)) in self.base.iter_mut().zip(&self.plan.units).enumerate() {
+            *base = Ramped::at(unit.base);
+            put(&mut self.setpoint, index, unit.base);
+        }
+        self.ends = [TieEnd::new(); TIES_MAX];
+        self.open = [false; TIES_MAX];
+        self.kinds = [Column::Closed; X];
+        self.main = Iterate::new();
+        self.shadow = Iterate::new();
+        self.feeders = Feeders::new();
+        self.judgement = Judgement::new();
+        self.ladder = Ladder::new();
+        self.verdict = Verdict::Blind;
+        self.rows
+            .choose(&self.plan, &self.network, &self.tie_closed);
+        self.refresh_boxes();
+        self.rebuild();
+        self.ready = true;
+        Ok(())
+    }
+
+    /// Whether a charter is loaded.
+    pub fn is_ready(&self) -> bool {
+        self.ready
+    }
+
+    /// The plan in force.
+    pub fn plan(&self) -> &Plan<B, X, R> {
+        &self.plan
+    }
+
+    /// Present rung.
+    pub fn rung(&self) -> Rung {
+        self.ladder.rung()
+    }
+
+    /// The network with its sensitivities.
+    pub fn network(&self) -> &Network<B, R> {
+        &self.network
+    }
+
+    /// The estimates in force.
+    pub fn estimate(&self) -> &Estimate<R> {
+        &self.estimate
+    }
+
+    /// Set-point of a unit now, pu.
+    pub fn setpoint(&self, unit: usize) -> f32 {
+        at(&self.setpoint, unit)
+    }
+
+    /// Take in a message addressed to this steward.
+    ///
+    /// Returns whether it could be used; what can not is dropped whole.
+    pub fn hear(&mut self, message: &Message<'_>) -> bool {
+        if !self.ready {
+            return false;
+        }
+        let per_mw = 1.0 / self.plan.base_mva;
+        match message {
+            Message::Measurements(m) => {
+                let newer =
+                    !self.measured.any || (m.tick.wrapping_sub(self.measured.tick) as i32) > 0;
+                let fits = newer && Measured::fits(&self.plan, m);
+                if fits {
+                    self.measured.take(&self.plan, &self.network, m);
+                }
+                fits
+            }
+            Message::Schedule(s) => {
+                let goal = s.export_mw * per_mw;
+                let tie = self.plan.ties.get(usize::from(s.tie));
+                let fits = tie.is_some_and(|tie| abs(goal) <= tie.rating);
+                match self.schedule.get_mut(usize::from(s.tie)) {
+                    Some(schedule) if fits => schedule.go(goal, s.ramp_ticks),
+                    _ => return false,
+                }
+                true
+            }
+            Message::BasePoint(b) => {
+                let goal = b.base_mw * per_mw;
+                let unit = self.plan.units.get(usize::from(b.unit));
+                let fits =
+                    unit.is_some_and(|u| goal >= u.emergency_low && goal <= u.emergency_high);
+                match self.base.get_mut(usize::from(b.unit)) {
+                    Some(base) if fits => base.go(goal, b.ramp_ticks),
+                    _ => return false,
+                }
+                true
+            }
+            Message::Restore(_) => {
+                self.feeders.release();
+                true
+            }
+            Message::TieTerms(terms) => {
+                let ties = self.plan.ties.iter().zip(&mut self.ends);
+                let mut ends = ties.filter(|(tie, _)| tie.number == terms.tie);
+                ends.next()
+                    .is_some_and(|(_, end)| end.hear(terms, &self.plan.settings))
+            }
+            Message::Hello(_)
+            | Message::CharterPart(_)
+            | Message::CharterState(_)
+            | Message::Run(_)
+            | Message::Stop(_)
+            | Message::Orders(_)
+            | Message::Status(_)
+            | Message::ProofPart(_) => false,
+        }
+    }
+
+    /// Move one tick on and say what must be said.
+    pub fn tick(&mut self, tick: u32, say: &mut dyn FnMut(Say<'_>)) {
+        if !self.ready {
+            return;
+        }
+        self.note_missing(tick);
+        let moved = self.follow_statuses();
+        self.pass_ramps();
+        self.meet_neighbours();
+        let sight = self
+            .estimate
+            .update(&self.plan, &self.network, &self.measured, &self.active());
+        let clear = sight == Sight::Clear && self.estimate.is_started();
+        self.refresh_boxes();
+        if self.update_kinds() || moved {
+            self.rebuild();
+        }
+        self.fill_problem();
+        self.limits.fill(&self.scaled, &self.problem);
+        let settings = self.plan.settings;
+        self.main.run(
+            &self.scaled,
+            &self.limits,
+            settings.dual_clamp,
+            settings.iterations,
+        );
+        let violation = self.main.violation(&self.scaled, &self.limits);
+        let wish = self.wishes();
+        let still = self.write_units(&wish, sight);
+        self.settle_ends(&wish);
+        let (hard, conditional) = self.judge(clear);
+        let witness = self.run_shadow();
+        self.speak_verdict(clear, violation, still);
+        let total = self.write_feeders(&wish, violation);
+        let found = Finding {
+            clear,
+            hard,
+            conditional,
+            witness,
+            shedding: total > 0.01,
+        };
+        let step = self.ladder.tick(found, &settings);
+        self.speak(tick, step, say);
+    }
+
+    /// Readings that did not come get old.
+    fn note_missing(&mut self, tick: u32) {
+        let fresh = self.measured.any && self.measured.tick == tick;
+        self.missed_ticks = if fresh {
+            0
+        } else {
+            self.missed_ticks.saturating_add(1)
+        };
+        if self.missed_ticks > u16::from(AGE_MAX) {
+            self.measured.age_out();
+        }
+    }
+
+    /// Bring network, ties and units to the statuses that are believed; true when rows may have changed.
+    fn follow_statuses(&mut self) -> bool {
+        let strength = self.strength();
+        let mut change = Change::None;
+        for index in 0..self.plan.lines.len() {
+            let closed = self
+                .measured
+                .line_closed
+                .get(index)
+                .copied()
+                .unwrap_or(true);
+            if closed == self.network.is_closed(index) {
+                continue;
+            }
+            let part = &mut self.estimate.part;
+            let now = if closed {
+                self.network.close(&self.plan, index, part, &strength)
+            } else {
+                self.network.open(&self.plan, index, part, &strength)
+            };
+            change = if change == Change::Relearn || now == Change::None {
+                change
+            } else {
+                now
+            };
+        }
+        let ties_moved = self.tie_closed != self.measured.tie_closed;
+        let units_moved = self.unit_on != self.measured.unit_in_service;
+        self.tie_closed = self.measured.tie_closed;
+        self.unit_on = self.measured.unit_in_service;
+        match change {
+            Change::Relearn => self.estimate.relearn(),
+            Change::None if !ties_moved && !units_moved => return false,
+            Change::None | Change::Exact | Change::Cut => {
+                self.estimate.freeze(self.plan.settings.freeze_ticks);
+            }
+        }
+        self.rows
+            .choose(&self.plan, &self.network, &self.tie_closed);
+        true
+    }
+
+    /// Unit capacity at each bus, pu: which piece of a cut area is worth keeping.
+    fn strength(&self) -> [f32; B] {
+        let mut strength = [0.0; B];
+        for (unit, &on) in self.plan.units.iter().zip(&self.unit_on) {
+            if on {
+                let bus = usize::from(unit.bus);
+                let before = at(&strength, bus);
+                put(&mut strength, bus, before + max(unit.emergency_high, 0.0));
+            }
+        }
+        strength
+    }
+
+    fn pass_ramps(&mut self) {
+        self.schedule.iter_mut().for_each(Ramped::pass);
+        self.base.iter_mut().for_each(Ramped::pass);
+    }
+
+    /// Agreed exports now; a tie that is out carries nothing.
+    fn schedules(&self) -> [f32; TIES_MAX] {
+        let mut out = [0.0; TIES_MAX];
+        for (index, (value, schedule)) in out.iter_mut().zip(&self.schedule).enumerate() {
+            *value = if self.rows.is_attached(index) {
+                schedule.now
+            } else {
+                0.0
+            };
+        }
+        out
+    }
+
+    /// Who leans, how far away, and which ties are open for it.
+    fn meet_neighbours(&mut self) {
+        let settings = self.plan.settings;
+        let heard = self.ends.iter().take(self.plan.ties.len());
+        let heard = heard.map(|end| end.theirs(settings.neighbour_ticks));
+        self.distance = neighbour::help_distance(self.ladder.rung(), heard);
+        let asks = self.asks();
+        for (index, end) in self.ends.iter_mut().enumerate().take(self.plan.ties.len()) {
+            let attached = self.rows.is_attached(index);
+            end.pass(asks && attached, attached);
+            if let Some(open) = self.open.get_mut(index) {
+                *open = attached && end.is_open(asks, &settings);
+            }
+        }
+    }
+
+    /// Whether this area opens its ties to help.
+    fn asks(&self) -> bool {
+        self.distance <= self.plan.settings.help_hops
+    }
+
+    /// Actuators whose output counts as controlled.
+    fn active(&self) -> [bool; X] {
+        let mut active = [true; X];
+        for (slot, unit) in active.iter_mut().zip(&self.plan.units) {
+            *slot = unit.available;
+        }
+        active
+    }
+
+    fn view<'a>(&'a self, schedule: &'a [f32; TIES_MAX]) -> View<'a, B, X, R> {
+        View {
+            plan: &self.plan,
+            network: &self.network,
+            measured: &self.measured,
+            rows: &self.rows,
+            feeders: &self.feeders,
+            schedule,
+        }
+    }
+
+    fn refresh_boxes(&mut self) {
+        let schedule = self.schedules();
+        let mut boxes = Boxes::new();
+        let view = self.view(&schedule);
+        view.actuators(self.ladder.rung(), &mut boxes);
+        view.ties(
+            |index| self.open.get(index).copied().unwrap_or(false),
+            &mut boxes,
+        );
+        self.boxes = boxes;
+    }
+
+    /// Which columns are open; true when that has changed.
+    fn update_kinds(&mut self) -> bool {
+        let schedule = self.schedules();
+        let mut kinds = [Column::Closed; X];
+        self.view(&schedule).columns(&self.boxes, &mut kinds);
+        let changed = kinds != self.kinds;
+        self.kinds = kinds;
+        changed
+    }
+
+    /// New rows or open columns: fill and scale again, keeping the physical duals.
+    fn rebuild(&mut self) {
+        let (mut main, mut shadow) = ([0.0; R], [0.0; R]);
+        self.scaled.physical_dual(&self.main.y, &mut main);
+        self.scaled.physical_dual(&self.shadow.y, &mut shadow);
+        self.fill_costs();
+        self.rows
+            .fill(&self.plan, &self.network, self.scaled.matrix_mut());
+        let (cols, rows, eqs) = (self.plan.cols(), self.plan.rows(), self.plan.eqs());
+        let kinds = self.kinds;
+        let used = kinds.get(..cols).unwrap_or_default();
+        self.scaled.scale(&self.problem.curvature, used, rows, eqs);
+        let mut scaled = [0.0; R];
+        self.scaled.scaled_dual(&main, &mut scaled);
+        clamp_dual(&mut scaled, self.plan.settings.dual_clamp);
+        self.main.set_dual(&scaled);
+        self.scaled.scaled_dual(&shadow, &mut scaled);
+        clamp_dual(&mut scaled, self.plan.settings.dual_clamp);
+        self.shadow.set_dual(&scaled);
+    }
+
+    /// The part of the problem that does not change from tick to tick.
+    fn fill_costs(&mut self) {
+        let settings = &self.plan.settings;
+        let units = self.plan.units.len();
+        for (index, unit) in self.plan.units.iter().enumerate() {
+            put(&mut self.problem.curvature, index, unit.cost);
+            put(&mut self.problem.weight, index, 0.0);
+        }
+        for (index, feeder) in self.plan.feeders.iter().enumerate() {
+            put(&mut self.problem.curvature, units + index, feeder.curvature);
+            put(&mut self.problem.weight, units + index, feeder.price);
+        }
+        for tie in 0..self.plan.ties.len() {
+            let curvature = settings.tie_curvature + settings.agreement_penalty;
+            let (flow, angle) = (self.plan.tie_col(tie), self.plan.angle_col(tie));
+            put(&mut self.problem.curvature, flow, curvature);
+            put(&mut self.problem.curvature, angle, curvature);
+            put(&mut self.problem.weight, flow, settings.tie_price);
+            put(&mut self.problem.weight, angle, 0.0);
+        }
+    }
+
+    /// The part that does: ranges, targets, prices, row limits.
+    fn fill_problem(&mut self) {
+        let schedule = self.schedules();
+        self.problem.low = self.boxes.low;
+        self.problem.high = self.boxes.high;
+        for (index, base) in self.base.iter().enumerate().take(self.plan.units.len()) {
+            put(&mut self.problem.target, index, base.now);
+        }
+        let prices = self
+            .plan
+            .ties
+            .iter()
+            .zip(&self.ends)
+            .zip(&self.open)
+            .enumerate();
+        for (index, ((tie, end), &open)) in prices {
+            let [flow, angle] = if open { end.price() } else { [0.0; 2] };
+            let flow = if tie.from_end { flow } else { -flow };
+            put(&mut self.problem.price, self.plan.tie_col(index), flow);
+            put(&mut self.problem.price, self.plan.angle_col(index), angle);
+        }
+        self.rows.limits(
+            &self.plan,
+            &self.network,
+            &self.estimate.part,
+            &schedule,
+            &mut self.problem,
+        );
+    }
+
+    /// The law's value of every unknown, inside its range.
+    fn wishes(&self) -> [f32; X] {
+        let mut wish = [0.0; X];
+        for (col, value) in wish.iter_mut().enumerate().take(self.plan.cols()) {
+            let (low, high) = self.boxes.get(col);
+            *value = self.main.value(&self.scaled, col, low, high);
+        }
+        wish
+    }
+
+    /// Write the units' set-points; true when none of them moves any more.
+    fn write_units(&mut self, wish: &[f32; X], sight: Sight) -> bool {
+        let mut still = true;
+        for (index, unit) in self.plan.units.iter().enumerate() {
+            // Cut off from sight or from the area: the last order stands.
+            let frozen = sight == Sight::None
+                || !self.estimate.is_started()
+                || !self.network.is_kept(unit.bus.into());
+            let before = at(&self.setpoint, index);
+            let value = if frozen { before } else { at(wish, index) };
+            let value = clip(
+                value,
+                min_zero(unit.emergency_low),
+                max(unit.emergency_high, 0.0),
+            );
+            still &= abs(value - before) < STILL;
+            put(&mut self.setpoint, index, value);
+        }
+        still
+    }
+
+    fn settle_ends(&mut self, wish: &[f32; X]) {
+        let settings = self.plan.settings;
+        let ties = self
+            .plan
+            .ties
+            .iter()
+            .zip(&mut self.ends)
+            .zip(&self.open)
+            .enumerate();
+        for (index, ((tie, end), &open)) in ties {
+            let flow = at(wish, self.plan.actuators() + index);
+            let angle = at(wish, self.plan.actuators() + self.plan.ties.len() + index);
+            let along = if tie.from_end { flow } else { -flow };
+            end.settle(open, [along, angle], &settings);
+        }
+    }
+
+    fn write_feeders(&mut self, wish: &[f32; X], violation: f32) -> f32 {
+        let mut feeder_wish = [0.0; X];
+        let wishes = wish.iter().skip(self.plan.units.len());
+        for (slot, value) in feeder_wish
+            .iter_mut()
+            .zip(wishes)
+            .take(self.plan.feeders.len())
+        {
+            *slot = *value;
+        }
+        let now = FeederTick {
+            rung: self.ladder.rung(),
+            freq_dev_hz: self.measured.freq_dev_hz.unwrap_or(0.0),
+            violation,
+            settled: self.verdict == Verdict::Settled,
+            ripe: self.ladder.is_ripe(&self.plan.settings),
+        };
+        self.feeders
+            .update(&self.plan, &feeder_wish, &self.boxes, now);
+        self.feeders.total(self.plan.feeders.len())
+    }
+
+    /// Solve the next tighter rung beside; true when it fits within tolerance.
+    fn run_shadow(&mut self) -> bool {
+        let schedule = self.schedules();
+        let mut boxes = Boxes::new();
+        self.view(&schedule)
+            .shadow(self.ladder.rung(), &self.ends, &mut boxes);
+        self.problem.low = boxes.low;
+        self.problem.high = boxes.high;
+        let margin = self.plan.settings.climb_margin;
+        let (eqs, rows) = (self.plan.eqs(), self.plan.rows());
+        let limits = self
+            .problem
+            .row_low
+            .iter_mut()
+            .zip(&mut self.problem.row_high);
+        for (low, high) in limits.take(rows).skip(eqs) {
+            let by = margin * (*high - *low);
+            *low += by;
+            *high -= by;
+        }
+        self.limits.fill(&self.scaled, &self.problem);
+        let settings = self.plan.settings;
+        self.shadow.run(
+            &self.scaled,
+            &self.limits,
+            settings.dual_clamp,
+            settings.shadow_iterations,
+        );
+        let violation = self.shadow.violation(&self.scaled, &self.limits);
+        self.ladder.rung() != Rung::Keep && violation < settings.climb_tolerance
+    }
+
+    fn speak_verdict(&mut self, clear: bool, violation: f32, still: bool) {
+        let freq = self.measured.freq_dev_hz.map_or(REST_HZ, abs);
+        self.verdict = if !clear {
+            Verdict::Blind
+        } else if self.judgement.proven > self.plan.settings.proof_threshold {
+            Verdict::Impossible
+        } else if violation < self.plan.settings.climb_tolerance && still && freq < REST_HZ {
+            Verdict::Settled
+        } else {
+            Verdict::Working
+        };
+    }
+
+    fn speak(&mut self, tick: u32, step: Option<Move>, say: &mut dyn FnMut(Say<'_>)) {
+        if matches!(step, Some(Move::Down { .. } | Move::Exhausted)) {
+            self.proofs = self.proofs.wrapping_add(1);
+            self.say_proof(tick, say);
+        }
+        self.say_orders(tick, say);
+        self.say_status(tick, say);
+        self.say_terms(tick, say);
+    }
+}
+
+impl<const B: usize, const X: usize, const R: usize> Default for Steward<B, X, R> {
+    fn default() -> Self {
+        Self::new()
+    }
+}
+
+fn min_zero(value: f32) -> f32 {
+    crate::law::kernel::min(value, 0.0)
+}
+
+fn clamp_dual(y: &mut [f32], clamp: f32) {
+    for value in y {
+        *value = clip(*value, -clamp, clamp);
+    }
+}
