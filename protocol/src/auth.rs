@@ -102,7 +102,7 @@ mod tests {
     }
 
     /// Key, data and the first 16 bytes of the tag: RFC 4231, test cases 1 to
-    /// 7, from memory, recomputed with an independent implementation.
+    /// 6, from memory, recomputed with an independent implementation.
     fn rfc_4231() -> Vec<(Vec<u8>, Vec<u8>, &'static str)> {
         vec![
             (
