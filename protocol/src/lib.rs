@@ -11,9 +11,9 @@
 //! reads a clock or trusts a length. `WIRE.md` beside this crate is normative;
 //! the golden tests read its worked examples.
 //!
-//! Data flow: `message` turns a value into payload bytes, [`frame`] wraps them
-//! in header, tag and checksum inside COBS, [`decoder`] finds frames in a byte
-//! stream, `auth` makes and checks the tag, `charter` is the fixed-size data
+//! Data flow: [`message`] turns a value into payload bytes, [`frame`] wraps them
+//! in header, tag and checksum inside [`cobs`], [`decoder`] finds frames in a byte
+//! stream, [`auth`] makes and checks the tag, [`charter`] is the fixed-size data
 //! a steward boots with.
 //!
 //! Sign conventions, for the whole project:
@@ -28,8 +28,12 @@
 //! | storage output | discharging |
 //! | frequency deviation | above nominal |
 
+#[cfg(test)]
+extern crate std;
+
 pub mod auth;
 pub mod charter;
+pub mod cobs;
 pub mod decoder;
 pub mod frame;
 pub mod limits;
