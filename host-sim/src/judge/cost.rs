@@ -8,7 +8,8 @@
 use crate::case::model::Grid;
 
 use super::least::violation_pu;
-use super::problem::{Scope, Setting, Slack, TIE_CURVATURE, build};
+use super::problem::{Scope, Slack, build};
+use super::setting::{Setting, TIE_CURVATURE};
 use super::topology::is_tie;
 
 /// A point of the programme, or of a run, in pu.

@@ -7,7 +7,7 @@
 use crate::case::model::FeederKind;
 use crate::record::{Recording, Scheme};
 
-use super::problem::Setting;
+use super::setting::Setting;
 use super::topology::BusRole;
 use super::{Fact, Reference, breaker_slack_mw};
 

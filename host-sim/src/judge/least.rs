@@ -6,7 +6,8 @@
 //! Feasible means that the smallest possible worst violation is below half of
 //! what a steward must prove before it gives ground.
 
-use super::problem::{Scope, Setting, Slack, build};
+use super::problem::{Scope, Slack, build};
+use super::setting::Setting;
 
 /// What was found.
 #[derive(Clone, Debug, PartialEq)]

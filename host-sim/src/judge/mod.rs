@@ -14,6 +14,7 @@ mod facts;
 mod least;
 mod problem;
 mod program;
+mod setting;
 mod topology;
 
 #[cfg(test)]
@@ -23,7 +24,7 @@ use serde::Serialize;
 
 use crate::case::model::{FeederKind, Grid, Play};
 use crate::record::{Recording, Scheme};
-use problem::{Setting, Sheds};
+use setting::{Setting, Sheds};
 use topology::Topology;
 
 /// Whether every limit held at the end.

@@ -1,7 +1,7 @@
 //! Hand-workable cases on two areas of two buses: A1-A2 = B1-B2, tie A2-B1.
 
 use super::least::{Least, least_rungs, short_areas};
-use super::problem::{Setting, Sheds};
+use super::setting::{Setting, Sheds};
 use super::topology::Topology;
 use super::*;
 use crate::report::sample;
