@@ -299,6 +299,7 @@ pub struct Event {
 /// What can happen in a play. Indices point into the grid.
 #[derive(Clone, Debug, PartialEq, Serialize)]
 #[serde(rename_all = "kebab-case")]
+#[allow(missing_docs, reason = "each variant's sentence explains its fields")]
 pub enum Happening {
     /// A line opens.
     LineTrip { line: usize },
