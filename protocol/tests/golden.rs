@@ -150,6 +150,7 @@ fn with_example<R>(name: &str, use_it: impl FnOnce(Message<'_>) -> R) -> R {
             tick: 7,
             rung: Rung::Keep,
             topology: 3,
+            root: 2,
             line_closed: bits(&[true, false, true], b0),
             tie_closed: bits(&[true], b1),
             claimed_mw: 12.5,

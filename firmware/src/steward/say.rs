@@ -10,8 +10,9 @@ use hedgerow_protocol::limits::{PART_MAX, UNITS_MAX};
 use hedgerow_protocol::message::packed::{pack_bits, pack_floats};
 use hedgerow_protocol::message::{Message, Orders, ProofPart, ProofVector, Status};
 
-/// Values per part of a proof.
-const PART_VALUES: usize = PART_MAX / 4;
+/// Values per part of a proof: what is left of a part after at most 48 bytes of
+/// numbers and breaker bits (33 of fields at their longest, 15 of bits).
+const PART_VALUES: usize = (PART_MAX - 48) / 4;
 
 /// Something to be said, and to whom.
 #[derive(Clone, Copy, Debug)]
@@ -134,6 +135,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             tick,
             rung: self.judgement.rung,
             topology: self.network.topology(),
+            root: self.network.root() as u8,
             line_closed,
             tie_closed,
             claimed_mw: self.judgement.proof.shortfall * self.plan.base_mva,

@@ -162,6 +162,8 @@ pub struct ProofPart<'a> {
     pub rung: Rung,
     /// Topology counter it was found under.
     pub topology: u16,
+    /// Local bus to which the rows' angles and flows are referred.
+    pub root: u8,
     /// Breaker status of the internal lines it was found under.
     #[serde(borrow)]
     pub line_closed: Bits<'a>,

@@ -194,6 +194,7 @@ impl Parts {
             tick: self.large[0],
             rung: self.rung(),
             topology: first,
+            root: self.small[0],
             line_closed: Bits(&self.bits[0]),
             tie_closed: Bits(&self.bits[1]),
             claimed_mw: self.floats[0],

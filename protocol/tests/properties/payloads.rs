@@ -64,7 +64,7 @@ fn largest_measurements_are_as_long_as_derived() {
 fn largest_others() -> Vec<Message<'static>> {
     let part_bytes = PART_MAX - 3 - 3 - 2;
     // proof, tick, rung, topology, claim, vector, first, total, three list lengths.
-    let proof_overhead = 3 + 5 + 1 + 3 + 4 + 1 + 3 + 3 + 4;
+    let proof_overhead = 3 + 5 + 1 + 3 + 1 + 4 + 1 + 3 + 3 + 4;
     let bit_bytes = LINES_MAX.div_ceil(8) + TIES_MAX.div_ceil(8);
     vec![
         Message::Hello(Hello {
@@ -108,6 +108,7 @@ fn largest_others() -> Vec<Message<'static>> {
             tick: u32::MAX,
             rung: Rung::Shed,
             topology: u16::MAX,
+            root: u8::MAX,
             line_closed: bits(LINES_MAX),
             tie_closed: bits(TIES_MAX),
             claimed_mw: f32::MAX,
