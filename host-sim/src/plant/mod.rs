@@ -154,6 +154,8 @@ impl Plant {
 #[cfg(test)]
 mod island_tests;
 #[cfg(test)]
+mod mixed_tests;
+#[cfg(test)]
 mod reference_tests;
 #[cfg(test)]
 mod tests;
