@@ -370,3 +370,44 @@ fn a_thousand_random_events_leave_the_plant_whole() {
     }
     assert!(done > 200 && split && dark, "{done} {split} {dark}");
 }
+
+#[test]
+fn a_known_topology_is_taken_from_a_bounded_store() {
+    let mut plant = plant();
+    let first = plant.propagator.clone();
+    plant.apply(&trip(1)).unwrap();
+    plant.apply(&close(1)).unwrap();
+    assert!(std::sync::Arc::ptr_eq(&first, &plant.propagator));
+    for mw in 1..200 {
+        plant.set_bus_load_mw(0, 40.0 + f64::from(mw) * 0.01);
+    }
+    assert_eq!(plant.cache.len(), CACHE_LEN);
+    // Forgotten meanwhile, and built again to the same figures.
+    plant.set_bus_load_mw(0, 40.0);
+    assert!(!std::sync::Arc::ptr_eq(&first, &plant.propagator));
+    assert_eq!(first.response, plant.propagator.response);
+}
+
+#[test]
+fn flows_at_rest_after_a_trip_are_the_dc_flows_of_what_is_left() {
+    let grid = new_england();
+    let mut plant = Plant::new(&grid, 0.02).unwrap();
+    plant.apply(&trip(5)).unwrap();
+    plant.apply(&Happening::UnitTrip { unit: 3 }).unwrap();
+    run(&mut plant, 400.0);
+    let freq_hz = plant.bus_freq_dev_hz()[0];
+    assert!(freq_hz < -0.1);
+    let mut injection_mw: Vec<f64> = plant.bus_load_mw().iter().map(|load| -load).collect();
+    for (unit, data) in grid.units.iter().enumerate() {
+        if plant.unit_in_service()[unit] {
+            // Damping of 1 pu on the nameplate, in pu of 60 Hz.
+            injection_mw[data.bus] +=
+                plant.unit_output_mw()[unit] - data.rating_mva * freq_hz / 60.0;
+        }
+    }
+    let network = crate::grid::dc::DcNetwork::new(&grid, plant.line_closed()).unwrap();
+    let expected_mw = network.flows_mw(&injection_mw).unwrap().flow_mw;
+    for (flow_mw, expected_mw) in plant.line_flow_mw().iter().zip(expected_mw) {
+        assert!((flow_mw - expected_mw).abs() < 1e-6);
+    }
+}
