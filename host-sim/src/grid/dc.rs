@@ -69,8 +69,8 @@ pub enum DcError {
 enum Factors {
     /// No bus but reference buses.
     Empty,
-    Cholesky(Llt<usize, f64>),
-    General(Lu<usize, f64>),
+    Cholesky(Box<Llt<usize, f64>>),
+    General(Box<Lu<usize, f64>>),
 }
 
 /// A network of closed lines, factorised.
@@ -144,12 +144,12 @@ impl DcNetwork {
             let symbolic = SymbolicLlt::try_new(matrix.symbolic(), Side::Lower)
                 .map_err(|_| DcError::Singular)?;
             Llt::try_new_with_symbolic(symbolic, matrix.as_ref(), Side::Lower)
-                .map(Factors::Cholesky)
+                .map(|factors| Factors::Cholesky(Box::new(factors)))
                 .map_err(|_| DcError::Singular)
         } else {
             let symbolic = SymbolicLu::try_new(matrix.symbolic()).map_err(|_| DcError::Singular)?;
             Lu::try_new_with_symbolic(symbolic, matrix.as_ref())
-                .map(Factors::General)
+                .map(|factors| Factors::General(Box::new(factors)))
                 .map_err(|_| DcError::Singular)
         }
     }

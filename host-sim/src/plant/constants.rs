@@ -24,6 +24,7 @@ pub struct UnitConstants {
     pub inertia: f64,
     /// Inertia if the unit must carry an island without any.
     pub virtual_inertia: f64,
+    /// Damping of the machine itself, not part of its output.
     pub damping: f64,
     /// MW per rad/s of frequency deviation; 0 without governor.
     pub droop_gain: f64,
@@ -31,9 +32,12 @@ pub struct UnitConstants {
     /// Delivered MW per MW of reference.
     pub gain: f64,
     pub bias_mw: f64,
+    /// Emergency range, lower end.
     pub lowest_mw: f64,
+    /// Emergency range, upper end.
     pub highest_mw: f64,
     pub ramp_mw_per_s: f64,
+    /// Energy when full; none for units that store none.
     pub energy_mwh: Option<f64>,
     pub base_mw: f64,
     /// Reference at which the unit delivers its base point.
@@ -102,6 +106,7 @@ pub struct Constants {
 }
 
 impl Constants {
+    /// Convert a grid's figures; an unusable reactance is an error.
     pub fn new(grid: &Grid, step_s: f64) -> Result<Self, DcError> {
         let tau = std::f64::consts::TAU;
         Ok(Self {

@@ -4,8 +4,9 @@
 //! buses; loads with frequency dependence; units with set-point, ramp limit,
 //! gain and bias errors, droop, first-order lag, range and storage; feeders;
 //! islands. No voltage, no reactive power, no protection but the synchronism
-//! check. The linear part is exact for any step; a unit that meets a limit does
-//! so at the end of a step. The same calls give the same bits.
+//! check: an island short of power sags as far as its damping lets it. The
+//! linear part is exact for any step; a unit that meets a limit does so at the
+//! end of a step. The same calls give the same bits.
 //!
 //! Data flow: `Grid` -> [`Plant::new`] at rest -> orders (`set_*`) and events
 //! ([`Plant::apply`]) -> [`Plant::step`] -> accessors. Right after an event the
@@ -84,6 +85,9 @@ impl Plant {
     }
 
     /// Frequency deviation of each bus in Hz; 0 where dark.
+    ///
+    /// At a bus with neither inertia nor damping: the change of its eliminated
+    /// angle, what units at it do themselves left out.
     pub fn bus_freq_dev_hz(&self) -> &[f64] {
         &self.shown.freq_dev_hz
     }
@@ -153,6 +157,8 @@ impl Plant {
 
 #[cfg(test)]
 mod island_tests;
+#[cfg(test)]
+mod mixed_tests;
 #[cfg(test)]
 mod reference_tests;
 #[cfg(test)]

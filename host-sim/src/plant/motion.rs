@@ -36,6 +36,7 @@ pub(super) struct Motion {
 }
 
 impl Motion {
+    /// At these angles and outputs, at nominal frequency; a propagator must be loaded next.
     pub fn new(constants: &Constants, angle_rad: Vec<f64>, output_mw: Vec<f64>) -> Self {
         let bus_count = constants.buses.len();
         Self {
