@@ -72,6 +72,14 @@ pub fn text(bundle: &Bundle, colour: Colour) -> String {
     out
 }
 
+/// Play, outcome and the limits that were broken, without colour.
+pub fn brief(bundle: &Bundle) -> String {
+    let d = document(bundle);
+    let mut out = format!("{} ({}, seed {})", d.play, d.run.scheme, d.seed);
+    outcome(&mut out, &d.run, Colour::Off);
+    out
+}
+
 /// Break a sentence at spaces so that no line is wider than `width`.
 pub(super) fn wrapped(text: &str, width: usize) -> Vec<String> {
     let mut lines: Vec<String> = vec![String::new()];
