@@ -313,7 +313,7 @@ fn judged(out: &mut String, run: &RunFigures, colour: Colour) {
     for f in j.facts.iter().filter(|f| f.name != "rung") {
         let mark = if f.met { "met   " } else { "BROKEN" };
         let line = format!(
-            "  {mark} {:<26} {:>9.3} of {:>8.3} {:<11} {}",
+            "  {mark} {:<26} {:>9.3} of {:>8.3} {:<6} {}",
             f.name, f.worst, f.limit, f.unit, f.where_
         );
         let _ = writeln!(out, "{}", fitted(&line, COLUMNS).trim_end());
