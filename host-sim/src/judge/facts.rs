@@ -99,7 +99,7 @@ fn frequency(setting: &Setting, found: &mut Found) {
         return;
     };
     let place = match (0..setting.grid.buses.len()).find(|&b| end.bus_island[b] == Some(island)) {
-        Some(bus) => format!("island of bus {}", setting.grid.buses[bus].name),
+        Some(bus) => format!("island of {}", setting.grid.buses[bus].name),
         None => format!("island {island}"),
     };
     let mut f = fact(
@@ -169,10 +169,10 @@ fn ratings(setting: &Setting, found: &mut Found) {
         return;
     };
     let f = fact(
-        "loading",
+        "line loading",
         worst * 100.0,
         RATING_SHARE * 100.0,
-        "% of rating",
+        "%",
         &grid.lines[line].name,
     );
     let (flow, rating) = (end.line_flow_mw[line].abs(), grid.lines[line].rating_mw);
@@ -205,7 +205,7 @@ fn rungs(setting: &Setting, reference: &Reference, found: &mut Found) {
         f.met = is == should;
         found.add(f, |f| {
             format!(
-                "{} ends at `{}`, its least rung is `{}`.",
+                "{} ends at rung {}, its least rung is {}.",
                 f.where_,
                 rung_word(is),
                 rung_word(should)

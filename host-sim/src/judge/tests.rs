@@ -253,7 +253,7 @@ fn a_dead_steward_leaves_its_area_without_reference_and_the_other_judged() {
         judgement
             .broken_by
             .iter()
-            .any(|s| s.contains("Ash ends at `lean`, its least rung is `keep`")),
+            .any(|s| s.contains("Ash ends at rung lean, its least rung is keep")),
         "{:?}",
         judgement.broken_by
     );
@@ -319,4 +319,100 @@ fn a_ring_of_areas_can_keep_its_schedule() {
 fn a_chain_of_areas_has_no_meshed_tie() {
     let (grid, _, run) = sample::two_areas();
     assert!(Topology::of(&grid, &run).meshed.iter().all(|m| !m));
+}
+
+/// B2 is black and its unit gone; B1 carries nothing: the rest is judged as if B2 were not there.
+#[test]
+fn a_dark_bus_is_left_out_and_the_rest_judged() {
+    let (grid, play, mut run) = sample::two_areas();
+    sample::add_load(&mut run, 2, -100.0);
+    run.end.line_closed[2] = false;
+    run.end.line_flow_mw[2] = 0.0;
+    run.end.bus_island[3] = None;
+    run.end.unit_in_service[2] = false;
+    run.end.unit_setpoint_mw[2] = 0.0;
+    let judgement = judge(&grid, &play, &run);
+    assert_eq!(judgement.outcome, Outcome::Kept, "{judgement:?}");
+    assert!(
+        judgement.not_judged.is_empty(),
+        "{:?}",
+        judgement.not_judged
+    );
+    assert_eq!(judgement.least_rung, [0, 0]);
+}
+
+/// 50 MW stay off until the operator allows them back: they are no choice, so they are no fault.
+#[test]
+fn a_locked_feeder_is_taken_as_it_stands() {
+    let (grid, play, mut run) = sample::two_areas();
+    run.end.feeder_shed_mw[0] = 50.0;
+    run.end.feeder_locked[0] = true;
+    sample::set_units(&grid, &mut run, &[62.5, 87.5, 100.0]);
+    let judgement = judge(&grid, &play, &run);
+    assert_eq!(judgement.outcome, Outcome::Kept, "{judgement:?}");
+    assert_eq!(judgement.least_rung, [0, 0]);
+    run.end.feeder_locked[0] = false;
+    assert_eq!(judge(&grid, &play, &run).outcome, Outcome::Broken);
+}
+
+/// A unit the operator fixed is no choice either: A2 alone takes the 40 MW.
+#[test]
+fn a_fixed_unit_stays_at_its_base_point() {
+    let (mut grid, play, mut run) = sample::two_areas();
+    grid.units[0].status = crate::case::model::UnitStatus::Fixed;
+    sample::add_load(&mut run, 1, 40.0);
+    sample::set_units(&grid, &mut run, &[100.0, 140.0, 100.0]);
+    let judgement = judge(&grid, &play, &run);
+    // 1/2 * 3 * 0.4^2
+    assert!((judgement.optimum_cost.unwrap() - 0.24).abs() < 1e-6);
+    assert_eq!(
+        judgement.outcome,
+        Outcome::Kept,
+        "{:?}",
+        judgement.broken_by
+    );
+}
+
+/// The ring again, with help at `lean`: the optimum's cost is the recording's own when the
+/// recording is the optimum, mid-tie angles and all.
+#[test]
+fn the_cost_of_an_optimal_run_is_the_optimum() {
+    let (grid, play, mut run) = sample::ring();
+    sample::add_load(&mut run, 1, 10.0);
+    run.end.rung = vec![1, 0, 0];
+    let topology = Topology::of(&grid, &run);
+    let setting = Setting {
+        grid: &grid,
+        play: &play,
+        end: &run.end,
+        topology: &topology,
+        rungs: &[1, 0, 0],
+        sheds: Sheds::Free,
+    };
+    let point = cost::optimum(&setting).unwrap();
+    let best = cost::of_point(&setting, &point);
+    let optimum_mw: Vec<f64> = point.unit.iter().map(|u| 100.0 * u.unwrap()).collect();
+    sample::set_units(&grid, &mut run, &optimum_mw);
+    run.end.agreed_mw.clone_from(&run.end.line_flow_mw);
+    let judgement = judge(&grid, &play, &run);
+    assert!(
+        (judgement.cost - best).abs() < 1e-6,
+        "{} {best}",
+        judgement.cost
+    );
+    assert_eq!(judgement.least_rung, [1, 0, 0]);
+    assert_eq!(
+        judgement.outcome,
+        Outcome::Kept,
+        "{:?}",
+        judgement.broken_by
+    );
+    // Any other dispatch costs more.
+    for (a, b) in [(0, 1), (1, 2), (2, 0)] {
+        let mut other = optimum_mw.clone();
+        other[a] += 2.0;
+        other[b] -= 2.0;
+        sample::set_units(&grid, &mut run, &other);
+        assert!(judge(&grid, &play, &run).cost > best, "{a} {b}");
+    }
 }

@@ -80,15 +80,15 @@ pub fn rows(d: &Document) -> Vec<Row> {
 
 /// The table in at most 80 columns.
 pub fn text(d: &Document) -> String {
-    let mut out = format!("  {:<24}", "");
+    let mut out = format!(" {:<22}", "");
     for run in runs(d) {
-        let _ = write!(out, "{:>18}", run.scheme);
+        let _ = write!(out, "{:>19}", run.scheme);
     }
     out.push('\n');
     for row in rows(d) {
-        let _ = write!(out, "  {:<24}", row.name);
+        let _ = write!(out, " {:<22}", row.name);
         row.values.iter().for_each(|v| {
-            let _ = write!(out, "{v:>18}");
+            let _ = write!(out, "{v:>19}");
         });
         out.push('\n');
     }

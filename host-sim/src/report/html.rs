@@ -41,7 +41,7 @@ pub fn page(bundle: &Bundle) -> String {
                         p.note { "Labels are loadings: flow over continuous rating. Arrows point the way the power flows." }
                         (PreEscaped(map::svg(bundle.grid, &bundle.recording.end)))
                     }
-                    section #picture { h2 { "The run" } (PreEscaped(picture::svg(bundle.grid, bundle.recording))) }
+                    section #picture { h2 { "The run" } (PreEscaped(picture::svg(bundle.grid, &bundle.play.events, bundle.recording))) }
                     (settings(bundle.grid, bundle.play))
                     footer {
                         p { "Hedgerow " (d.meta.version) ". The same grid, play and seed give this page byte for byte." }
@@ -177,6 +177,11 @@ fn cards(run: &RunFigures) -> Markup {
 }
 
 fn area_row(area: &AreaFigures, least: Option<&&'static str>) -> Markup {
+    // A baseline has no rungs, whatever the record's zeros say.
+    let rungs = match area.verdict {
+        Some(_) => [area.rung, area.worst_rung, least.copied().unwrap_or("-")],
+        None => ["-"; 3],
+    };
     let verdict = if area.steward_alive {
         area.verdict.unwrap_or("-")
     } else {
@@ -185,7 +190,7 @@ fn area_row(area: &AreaFigures, least: Option<&&'static str>) -> Markup {
     html! {
         tr {
             th scope="row" { (area.name) }
-            td { (area.rung) } td { (area.worst_rung) } td { (least.copied().unwrap_or("-")) } td { (verdict) }
+            @for rung in rungs { td { (rung) } } td { (verdict) }
             td.num { (area.proofs) }
             td.num { (format!("{:.2}", area.ties_off_schedule_mw)) }
             td.num { (area.units_moved) }
@@ -231,7 +236,7 @@ fn facts(run: &RunFigures) -> Markup {
         section #facts {
             h2 { "Held against an independent optimum" }
             p.note {
-                "The end of the run against the optimum of the whole grid, found in double precision by an interior-point solver that shares nothing with the stewards. "
+                "The end of the run against the optimum of the whole grid, found in double precision by an interior-point solver that shares neither code nor method with the stewards. "
                 @match j.optimum_cost {
                     Some(best) => { "Cost " (format!("{:.4}", j.cost)) ", optimum " (format!("{best:.4}")) "." }
                     None => { "Cost " (format!("{:.4}", j.cost)) "; no reference for it." }

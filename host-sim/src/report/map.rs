@@ -10,7 +10,7 @@ use crate::case::model::Grid;
 use crate::record::FinalState;
 
 const WIDTH: f64 = 1000.0;
-const MARGIN: f64 = 52.0;
+const MARGIN: f64 = 60.0;
 const FOOT: f64 = 40.0;
 
 /// Beyond this many lines only ties and lines from 80 % on are labelled.
@@ -114,7 +114,13 @@ fn tints(out: &mut Drawing, grid: &Grid, at: &[(f64, f64)]) {
     }
 }
 
+/// Half the size of a box that a piece of text needs.
+type Half = (f64, f64);
+
+/// Names stand above or below their area, wherever fewer lines run.
 fn area_names(out: &mut Drawing, grid: &Grid, at: &[(f64, f64)]) {
+    let lines: Vec<((f64, f64), (f64, f64))> =
+        grid.lines.iter().map(|l| (at[l.from], at[l.to])).collect();
     for (a, area) in grid.areas.iter().enumerate() {
         let own: Vec<(f64, f64)> = at
             .iter()
@@ -122,21 +128,37 @@ fn area_names(out: &mut Drawing, grid: &Grid, at: &[(f64, f64)]) {
             .filter(|(b, _)| grid.buses[*b].area == a)
             .map(|(_, p)| *p)
             .collect();
-        if own.is_empty() {
+        let Some(highest) = own.iter().min_by(|p, q| p.1.total_cmp(&q.1)) else {
             continue;
-        }
+        };
         let x = own.iter().map(|p| p.0).sum::<f64>() / own.len() as f64;
-        let top = own.iter().map(|p| p.1).fold(f64::INFINITY, f64::min);
+        let low = own.iter().map(|p| p.1).fold(f64::NEG_INFINITY, f64::max);
+        let half: Half = (5.0 * area.name.chars().count() as f64, 9.0);
+        let candidates = [
+            (x, highest.1 - 43.0),
+            (highest.0, highest.1 - 43.0),
+            (x, low + 46.0),
+        ];
+        let crossed = |c: &(f64, f64)| lines.iter().filter(|l| crosses(l, *c, half)).count();
+        // The first of equals: above, if nothing speaks against it.
+        let best = candidates
+            .iter()
+            .min_by_key(|c| crossed(c))
+            .copied()
+            .unwrap_or((x, low));
         let more = format!(r#"font-weight="700" letter-spacing="1" {HALO}"#);
-        out.styled_text(
-            (x, top - 37.0),
-            Anchor::Middle,
-            15.0,
-            colour(a),
-            &more,
-            &area.name,
-        );
+        let place = (best.0, best.1 + 5.0);
+        out.styled_text(place, Anchor::Middle, 15.0, colour(a), &more, &area.name);
     }
+}
+
+/// Whether a segment runs through a box, looked at in 40 places.
+fn crosses(segment: &((f64, f64), (f64, f64)), centre: (f64, f64), half: Half) -> bool {
+    let ((x0, y0), (x1, y1)) = *segment;
+    (0..=40).map(|i| f64::from(i) / 40.0).any(|t| {
+        let (x, y) = (x0 + t * (x1 - x0), y0 + t * (y1 - y0));
+        (x - centre.0).abs() < half.0 && (y - centre.1).abs() < half.1
+    })
 }
 
 /// Colour and width of a loading.
@@ -160,10 +182,9 @@ fn lines(out: &mut Drawing, grid: &Grid, end: &FinalState, at: &[(f64, f64)]) {
             .filter(|o| same_ends(o, line))
             .count() as f64;
         let (from, to) = beside(from, to, 9.0 * twin);
-        let middle = ((from.0 + to.0) / 2.0, (from.1 + to.1) / 2.0);
         if !end.line_closed[l] {
             out.line(from, to, SLATE, 1.2, "3 5");
-            labels.push((middle, SLATE, "open".to_owned()));
+            labels.push((from, to, SLATE, "open".to_owned()));
             continue;
         }
         let loading = end.line_flow_mw[l].abs() / line.rating_mw;
@@ -178,11 +199,31 @@ fn lines(out: &mut Drawing, grid: &Grid, end: &FinalState, at: &[(f64, f64)]) {
                 true => format!("{:.0} %", 100.0 * loading),
                 false => format!("{:.0} MW", end.line_flow_mw[l].abs()),
             };
-            labels.push((middle, stroke, text));
+            labels.push((from, to, stroke, text));
         }
     }
-    for ((x, y), stroke, text) in labels {
-        out.styled_text((x, y - 5.0), Anchor::Middle, 10.5, stroke, HALO, &text);
+    let mut taken: Vec<(f64, f64)> = at.to_vec();
+    for (from, to, stroke, text) in labels {
+        let along = |t: f64| {
+            (
+                from.0 + t * (to.0 - from.0),
+                from.1 + t * (to.1 - from.1) - 1.5,
+            )
+        };
+        let free = |p: &(f64, f64)| {
+            taken
+                .iter()
+                .all(|q| (p.0 - q.0).abs() > 28.0 || (p.1 - q.1).abs() > 13.0)
+        };
+        let tries = [0.5, 0.4, 0.32, 0.74, 0.25];
+        let place = tries
+            .iter()
+            .map(|t| along(*t))
+            .find(free)
+            .unwrap_or(along(0.5));
+        taken.push(place);
+        let at = (place.0, place.1 + 5.0);
+        out.styled_text(at, Anchor::Middle, 10.5, stroke, HALO, &text);
     }
 }
 

@@ -12,6 +12,7 @@ pub mod csv;
 pub mod figures;
 pub mod html;
 pub mod json;
+mod lanes;
 pub mod map;
 pub mod picture;
 pub mod summary;
@@ -115,7 +116,7 @@ pub fn write_all(
         ("report.html".into(), html::page(bundle)),
         (
             "picture.svg".into(),
-            picture::svg(bundle.grid, bundle.recording),
+            picture::svg(bundle.grid, &bundle.play.events, bundle.recording),
         ),
         (
             "map.svg".into(),

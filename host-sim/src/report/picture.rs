@@ -8,17 +8,16 @@
 use super::svg::{
     ALARM, Anchor, Drawing, HAIR, INK, SLATE, colour, dash, decimals, reduced, ticks,
 };
-use super::{rung_word, verdict_word};
-use crate::case::model::Grid;
-use crate::record::{Recording, SaidVerdict, Scheme};
+use crate::case::model::{Event, Grid};
+use crate::record::{Recording, Scheme};
 
-const WIDTH: f64 = 1000.0;
-const LEFT: f64 = 62.0;
-const RIGHT: f64 = 178.0;
+pub(super) const WIDTH: f64 = 1000.0;
+pub(super) const LEFT: f64 = 62.0;
+pub(super) const RIGHT: f64 = 178.0;
 const TOP: f64 = 30.0;
 const PANEL: f64 = 150.0;
 const GAP: f64 = 34.0;
-const LANE: f64 = 34.0;
+pub(super) const LANE: f64 = 34.0;
 
 /// Curves a panel shows before the rest is left out (the table has them).
 const CURVES: usize = 10;
@@ -42,19 +41,23 @@ struct Panel<'a> {
     left_out: usize,
 }
 
-struct Frame<'a> {
-    recording: &'a Recording,
-    end_s: f64,
+/// The run and its time axis.
+pub(super) struct Frame<'a> {
+    pub(super) recording: &'a Recording,
+    pub(super) end_s: f64,
 }
 
 impl Frame<'_> {
-    fn x(&self, time_s: f64) -> f64 {
+    /// Place of a time, in pixels.
+    pub(super) fn x(&self, time_s: f64) -> f64 {
         LEFT + (WIDTH - LEFT - RIGHT) * (time_s / self.end_s).clamp(0.0, 1.0)
     }
 }
 
 /// Draw it.
-pub fn svg(grid: &Grid, recording: &Recording) -> String {
+///
+/// `events` are the play's: each is marked through all panels.
+pub fn svg(grid: &Grid, events: &[Event], recording: &Recording) -> String {
     let last_s = recording.series.times_s.last().copied().unwrap_or(0.0);
     let frame = Frame {
         recording,
@@ -72,18 +75,19 @@ pub fn svg(grid: &Grid, recording: &Recording) -> String {
     out.rect((0.0, 0.0), (WIDTH, height), "#ffffff", "");
     let axis_y = height - 30.0;
     time_axis(&mut out, &frame, axis_y);
+    mark_events(&mut out, &frame, events, axis_y);
     let mut y = TOP;
     for panel in &panels {
         draw_panel(&mut out, &frame, panel, y);
         y += PANEL + GAP;
     }
     if stewards {
-        draw_lanes(&mut out, &frame, grid, y);
+        super::lanes::draw_lanes(&mut out, &frame, grid, y);
     }
     out.finish(WIDTH, height, &format!("{} over time", recording.play))
 }
 
-/// Vertical lines through all panels: seconds, and the start of each happening.
+/// Vertical lines through all panels, at round seconds.
 fn time_axis(out: &mut Drawing, frame: &Frame, axis_y: f64) {
     let steps = ticks(0.0, frame.end_s, 10);
     let places = decimals(&steps);
@@ -105,6 +109,22 @@ fn time_axis(out: &mut Drawing, frame: &Frame, axis_y: f64) {
         SLATE,
         "s",
     );
+}
+
+/// Dotted lines where the play does something; the story says what.
+fn mark_events(out: &mut Drawing, frame: &Frame, events: &[Event], axis_y: f64) {
+    for event in events.iter().filter(|e| e.at_s <= frame.end_s) {
+        let x = frame.x(event.at_s);
+        out.line((x, TOP - 4.0), (x, axis_y), SLATE, 0.9, "1 3");
+        let (l, r, top, tip) = (x - 4.0, x + 4.0, axis_y + 7.0, axis_y);
+        out.raw(&format!(
+            r#"<polygon points="{l:.1},{top:.1} {r:.1},{top:.1} {x:.1},{tip:.1}" fill="{SLATE}"/>"#
+        ));
+    }
+    if !events.is_empty() {
+        let at = (WIDTH - RIGHT + 36.0, axis_y + 20.0);
+        out.text(at, Anchor::Start, 10.5, SLATE, "dotted: the play's events");
+    }
 }
 
 fn series<'a>(table: &'a [Vec<f64>], item: usize) -> impl Fn(usize) -> Option<f64> + 'a {
@@ -390,127 +410,9 @@ fn draw_panel(out: &mut Drawing, frame: &Frame, panel: &Panel, top: f64) {
 }
 
 /// A name that fits beside a panel.
-fn short(name: &str) -> String {
+pub(super) fn short(name: &str) -> String {
     match name.char_indices().nth(20) {
         Some((at, _)) => format!("{}...", &name[..at.saturating_sub(2)]),
         None => name.to_owned(),
-    }
-}
-
-/// Runs of equal values as (first sample, last sample + 1, value).
-fn spells<T: Copy + PartialEq>(values: &[T]) -> Vec<(usize, usize, T)> {
-    let mut out: Vec<(usize, usize, T)> = Vec::new();
-    for (i, v) in values.iter().enumerate() {
-        match out.last_mut() {
-            Some(last) if last.2 == *v => last.1 = i + 1,
-            _ => out.push((i, i + 1, *v)),
-        }
-    }
-    out
-}
-
-/// Fill of a rung: darker the more is given up; the word is written in it too.
-fn rung_fill(rung: u8) -> &'static str {
-    ["#e4efe7", "#f3e2b3", "#e3b27a", "#c9736b"][usize::from(rung.min(3))]
-}
-
-/// Fill of a verdict strip; height tells it too.
-fn verdict_look(verdict: SaidVerdict) -> (&'static str, f64) {
-    match verdict {
-        SaidVerdict::Settled => ("#8fb79b", 2.0),
-        SaidVerdict::Working => ("#7d8f9b", 4.0),
-        SaidVerdict::Impossible => (ALARM, 8.0),
-        SaidVerdict::Blind => (INK, 6.0),
-    }
-}
-
-fn draw_lanes(out: &mut Drawing, frame: &Frame, grid: &Grid, top: f64) {
-    let title = "Rung (band) and verdict (strip below it) by area";
-    out.styled_text(
-        (LEFT, top - 8.0),
-        Anchor::Start,
-        12.5,
-        INK,
-        r#"font-weight="600""#,
-        title,
-    );
-    let times = &frame.recording.series.times_s;
-    let until = |i: usize| frame.x(times.get(i).copied().unwrap_or(frame.end_s));
-    let empty = (Vec::new(), Vec::new());
-    for (a, area) in grid.areas.iter().enumerate() {
-        let y = top + a as f64 * LANE;
-        let s = &frame.recording.series;
-        out.text(
-            (WIDTH - RIGHT + 12.0, y + 15.0),
-            Anchor::Start,
-            11.0,
-            INK,
-            &short(&area.name),
-        );
-        for (from, to, rung) in spells(s.rung.get(a).unwrap_or(&empty.0)) {
-            let (x0, x1) = (until(from), until(to));
-            out.rect(
-                (x0, y),
-                (x1 - x0, 21.0),
-                rung_fill(rung),
-                r##"stroke="#ffffff" stroke-width="0.6""##,
-            );
-            if x1 - x0 > 46.0 {
-                out.text(
-                    (x0 + 5.0, y + 14.5),
-                    Anchor::Start,
-                    11.0,
-                    INK,
-                    rung_word(rung),
-                );
-            } else if x1 - x0 > 9.0 {
-                out.text(
-                    (x0 + 2.0, y + 14.5),
-                    Anchor::Start,
-                    9.0,
-                    INK,
-                    &rung.to_string(),
-                );
-            }
-        }
-        for (from, to, verdict) in spells(s.verdict.get(a).unwrap_or(&empty.1)) {
-            let (fill, height) = verdict_look(verdict);
-            let (x0, x1) = (until(from), until(to));
-            out.rect((x0, y + 22.5), ((x1 - x0).max(0.8), height), fill, "");
-        }
-    }
-    lane_legend(out, top + grid.areas.len() as f64 * LANE + 6.0);
-}
-
-fn lane_legend(out: &mut Drawing, y: f64) {
-    let mut x = LEFT;
-    for rung in 0..=3u8 {
-        out.rect((x, y), (16.0, 10.0), rung_fill(rung), "");
-        out.text(
-            (x + 20.0, y + 9.0),
-            Anchor::Start,
-            10.5,
-            SLATE,
-            &format!("{rung} {}", rung_word(rung)),
-        );
-        x += 82.0;
-    }
-    x += 20.0;
-    for verdict in [
-        SaidVerdict::Settled,
-        SaidVerdict::Working,
-        SaidVerdict::Impossible,
-        SaidVerdict::Blind,
-    ] {
-        let (fill, height) = verdict_look(verdict);
-        out.rect((x, y + 9.0 - height), (16.0, height), fill, "");
-        out.text(
-            (x + 20.0, y + 9.0),
-            Anchor::Start,
-            10.5,
-            SLATE,
-            verdict_word(verdict),
-        );
-        x += 90.0;
     }
 }

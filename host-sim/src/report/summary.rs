@@ -72,6 +72,14 @@ pub fn text(bundle: &Bundle, colour: Colour) -> String {
     out
 }
 
+/// Play, outcome and the limits that were broken, without colour.
+pub fn brief(bundle: &Bundle) -> String {
+    let d = document(bundle);
+    let mut out = format!("{} ({}, seed {})", d.play, d.run.scheme, d.seed);
+    outcome(&mut out, &d.run, Colour::Off);
+    out
+}
+
 /// Break a sentence at spaces so that no line is wider than `width`.
 pub(super) fn wrapped(text: &str, width: usize) -> Vec<String> {
     let mut lines: Vec<String> = vec![String::new()];
@@ -305,7 +313,7 @@ fn judged(out: &mut String, run: &RunFigures, colour: Colour) {
     for f in j.facts.iter().filter(|f| f.name != "rung") {
         let mark = if f.met { "met   " } else { "BROKEN" };
         let line = format!(
-            "  {mark} {:<26} {:>9.3} of {:>8.3} {:<11} {}",
+            "  {mark} {:<26} {:>9.3} of {:>8.3} {:<6} {}",
             f.name, f.worst, f.limit, f.unit, f.where_
         );
         let _ = writeln!(out, "{}", fitted(&line, COLUMNS).trim_end());

@@ -200,7 +200,11 @@ pub(super) fn decimals(ticks: &[f64]) -> usize {
     }
 }
 
-/// Reduce samples to first, lowest, highest and last of each pixel column.
+/// Difference in pixels that nobody sees.
+const UNSEEN_PX: f64 = 0.05;
+
+/// Reduce samples to first, lowest, highest and last of each pixel column,
+/// and level stretches to their ends.
 ///
 /// Not finite samples break nothing: they are left out.
 pub(super) fn reduced(points: impl Iterator<Item = (f64, f64)>) -> Vec<(f64, f64)> {
@@ -216,11 +220,16 @@ pub(super) fn reduced(points: impl Iterator<Item = (f64, f64)>) -> Vec<(f64, f64
     out
 }
 
-fn flush(column: &mut Vec<(f64, f64)>, out: &mut Vec<(f64, f64)>) {
-    if column.len() <= 4 {
-        out.append(column);
-        return;
+/// Append a point, or move the last one along while the curve is level.
+fn append(out: &mut Vec<(f64, f64)>, point: (f64, f64)) {
+    let level = |p: &(f64, f64)| (p.1 - point.1).abs() < UNSEEN_PX;
+    match out.as_mut_slice() {
+        [.., before, last] if level(before) && level(last) => last.0 = point.0,
+        _ => out.push(point),
     }
+}
+
+fn flush(column: &mut Vec<(f64, f64)>, out: &mut Vec<(f64, f64)>) {
     let by = |a: &&(f64, f64), b: &&(f64, f64)| a.1.total_cmp(&b.1);
     let mut kept: Vec<(f64, f64)> = [
         column.first(),
@@ -234,6 +243,6 @@ fn flush(column: &mut Vec<(f64, f64)>, out: &mut Vec<(f64, f64)>) {
     .collect();
     kept.sort_by(|a, b| a.0.total_cmp(&b.0));
     kept.dedup();
-    out.append(&mut kept);
+    kept.into_iter().for_each(|p| append(out, p));
     column.clear();
 }

@@ -162,7 +162,7 @@ fn csv_has_a_row_per_sample_and_a_unit_per_column() {
 #[test]
 fn a_picture_does_not_grow_with_the_run() {
     let (grid, _, mut run) = sample::two_areas();
-    let short = picture::svg(&grid, &run).len();
+    let short = picture::svg(&grid, &[], &run).len();
     let s = &mut run.series;
     let n = 60_000;
     s.times_s = (0..n).map(|i| f64::from(i) * 0.1).collect();
@@ -175,7 +175,7 @@ fn a_picture_does_not_grow_with_the_run() {
             *values = (0..n).map(|i| f64::from(i % 97)).collect();
         }
     }
-    let long = picture::svg(&grid, &run).len();
+    let long = picture::svg(&grid, &[], &run).len();
     assert!(long < 20 * short.max(20_000), "{short} {long}");
 }
 
@@ -206,7 +206,7 @@ fn ticks_are_round_and_inside_the_range() {
 fn an_empty_run_still_draws() {
     let (grid, _, mut run) = sample::two_areas();
     run.series = crate::record::Series::default();
-    assert!(picture::svg(&grid, &run).ends_with("</svg>\n"));
+    assert!(picture::svg(&grid, &[], &run).ends_with("</svg>\n"));
     assert!(csv::trace(&grid, &run).unwrap().starts_with("time_s"));
 }
 
