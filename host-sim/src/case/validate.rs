@@ -4,8 +4,8 @@
 //! already marked broken are left alone, and checks of the whole are skipped
 //! where a broken entry would make them guess.
 
-use super::fields::Marks;
 use super::grid_file::GridMarks;
+use super::marks::Marks;
 use super::model::{Bus, Feeder, Grid, Line, Unit, UnitKind, UnitStatus};
 use super::network::check_network;
 use super::problems::Problem;
