@@ -334,6 +334,7 @@ pub(crate) fn quoted(words: &[&str]) -> String {
 fn to_number(value: &DeValue<'_>) -> Option<f64> {
     match value {
         DeValue::Float(digits) => digits.as_str().parse().ok(),
+        DeValue::Integer(digits) if digits.radix() == 10 => digits.as_str().parse().ok(),
         DeValue::Integer(digits) => i64::from_str_radix(digits.as_str(), digits.radix())
             .ok()
             .map(|whole| whole as f64),

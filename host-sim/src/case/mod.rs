@@ -10,6 +10,7 @@
 mod bounds;
 pub mod builtin;
 pub mod capacity;
+pub mod cdf;
 
 pub mod defaults;
 mod fields;
@@ -20,6 +21,7 @@ mod nearest;
 pub mod network;
 mod play_file;
 pub mod problems;
+pub mod starter;
 mod tables;
 mod timeline;
 mod validate;

@@ -230,13 +230,19 @@ fn check_unit(unit: &Unit, place: &Marks, log: &mut Vec<Problem>) {
             .right("say `energy_mwh`, the energy when full");
             log.push(problem);
         }
-        (UnitKind::Battery, Some(_)) | (_, None) => {}
-        (_, Some(_)) => {
+        (UnitKind::Battery, Some(_)) => {}
+        (_, None) if !place.has("energy_start") => {}
+        (_, energy_mwh) => {
+            let key = if energy_mwh.is_some() {
+                "energy_mwh"
+            } else {
+                "energy_start"
+            };
             let problem = Problem::new(
-                place.of("energy_mwh"),
+                place.of(key),
                 format!("unit `{}` stores no energy", unit.name),
             )
-            .found("only a battery has `energy_mwh`")
+            .found(format!("only a battery has `{key}`"))
             .right("take it out, or say `kind = \"battery\"`");
             log.push(problem);
         }

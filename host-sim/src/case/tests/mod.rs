@@ -1,7 +1,9 @@
 //! Reading and checking: what is right passes, what is wrong is found at its place.
 
 mod grids;
+mod limits;
 mod plays;
+mod robust;
 
 use super::{Problems, parse_grid};
 
