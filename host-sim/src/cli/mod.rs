@@ -3,6 +3,10 @@
 //! Contract: a command returns how it ended; only `main` turns that into an
 //! exit code. Results go to stdout, progress and problems to stderr.
 
+pub mod check;
+pub mod import;
+pub mod new;
+
 /// How a command that ran to its end ended.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum Ending {
