@@ -103,11 +103,16 @@ impl Facts {
                 .iter()
                 .filter(|line| area(line.from) != area(line.to))
                 .count(),
-            load_mw: grid.buses.iter().map(|bus| bus.load_mw).sum(),
-            generation_mw: in_service.map(|unit| unit.base_mw).sum(),
-            feeders_mw: grid.feeders.iter().map(|feeder| feeder.load_mw).sum(),
+            load_mw: total(grid.buses.iter().map(|bus| bus.load_mw)),
+            generation_mw: total(in_service.map(|unit| unit.base_mw)),
+            feeders_mw: total(grid.feeders.iter().map(|feeder| feeder.load_mw)),
         }
     }
+}
+
+/// A sum that is 0 and not -0 where there is nothing to add.
+fn total(values: impl Iterator<Item = f64>) -> f64 {
+    values.fold(0.0, |sum, value| sum + value)
 }
 
 fn as_text(file: &str, grid: &Grid, plays: &[Play], facts: &Facts) -> String {
@@ -145,12 +150,12 @@ fn as_text(file: &str, grid: &Grid, plays: &[Play], facts: &Facts) -> String {
             load_mw += bus.load_mw;
         }
         let inside = |bus: usize| grid.buses[bus].area == index;
-        let base_mw: f64 = grid
-            .units
-            .iter()
-            .filter(|unit| inside(unit.bus))
-            .map(|unit| unit.base_mw)
-            .sum();
+        let base_mw = total(
+            grid.units
+                .iter()
+                .filter(|unit| inside(unit.bus))
+                .map(|unit| unit.base_mw),
+        );
         let _ = writeln!(
             out,
             "    area        {}: {buses} buses, load {load_mw:.1} MW, generation {base_mw:.1} MW",
@@ -209,7 +214,7 @@ mod tests {
     fn sums_the_built_in_example_up() {
         let text = builtin(false);
         assert!(text.starts_with("ok  built-in example\n"));
-        assert!(text.contains("45, of which 5 ties") || text.contains("of which 5 ties"));
+        assert!(text.contains("49, of which 5 ties"));
         assert!(text.contains("1400.0 MW"));
         assert!(text.contains("play        quillon"));
     }

@@ -166,6 +166,17 @@ fn convert_lines(case: &Case, rules: &mut Vec<String>) -> Vec<Line> {
             schedule_mw: None,
         });
     }
+    remark(case, &lines, [loops, zeros, parallel], rules);
+    lines
+}
+
+/// Say what of the branches was read otherwise than it stands.
+fn remark(
+    case: &Case,
+    lines: &[Line],
+    [loops, zeros, parallel]: [usize; 3],
+    rules: &mut Vec<String>,
+) {
     let taps = case
         .branches
         .iter()
@@ -200,7 +211,6 @@ fn convert_lines(case: &Case, rules: &mut Vec<String>) -> Vec<Line> {
         " with negative reactance: kept, allowed inside an area only",
     );
     say(parallel, " beside another one: named with #2 and so on");
-    lines
 }
 
 /// Negative generation becomes load; negative load becomes generation.

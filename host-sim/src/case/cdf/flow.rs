@@ -12,7 +12,7 @@ use super::super::model::Line;
 const RESIDUAL_PU_MAX: f64 = 1e-6;
 
 /// Flow of each line in pu, from `from` to `to`; none if the network has no unique flow.
-pub(super) fn base_flows_pu(injection_pu: &[f64], lines: &[Line]) -> Option<Vec<f64>> {
+pub(in crate::case) fn base_flows_pu(injection_pu: &[f64], lines: &[Line]) -> Option<Vec<f64>> {
     let count = injection_pu.len();
     if count < 2 {
         // One bus has no flows, and a matrix of no rows no factors.

@@ -10,7 +10,7 @@
 
 mod areas;
 mod convert;
-mod flow;
+pub(super) mod flow;
 mod read;
 mod write;
 
