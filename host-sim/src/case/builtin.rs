@@ -91,6 +91,7 @@ pub fn builtin_play(name: &str) -> Option<(Grid, Play)> {
 
 #[cfg(test)]
 mod tests {
+    use super::super::cdf::flow::base_flows_pu;
     use super::*;
 
     #[test]
@@ -117,6 +118,30 @@ mod tests {
         let load_mw: f64 = grid.buses.iter().map(|bus| bus.load_mw).sum();
         assert_eq!(load_mw, 1400.0);
         assert!(grid.buses.iter().all(|bus| bus.position.is_some()));
+    }
+
+    #[test]
+    fn base_case_fills_no_line_of_the_example_above_two_thirds() {
+        let grid = builtin_grid();
+        let mut injection_pu: Vec<f64> =
+            grid.buses.iter().map(|bus| -bus.load_mw / 100.0).collect();
+        for unit in &grid.units {
+            injection_pu[unit.bus] += unit.base_mw / 100.0;
+        }
+        let flows_pu = base_flows_pu(&injection_pu, &grid.lines).expect("one network");
+        for (line, flow_pu) in grid.lines.iter().zip(flows_pu) {
+            let loading = 100.0 * flow_pu.abs() / line.rating_mw;
+            assert!(loading < 0.667, "{}: {loading}", line.name);
+        }
+    }
+
+    #[test]
+    fn every_play_rests_before_it_ends() {
+        for (name, _) in builtin_plays() {
+            let (_, play) = builtin_play(name).expect(name);
+            let last_s = play.events.last().map_or(0.0, |event| event.at_s);
+            assert!(play.run.duration_s - last_s >= 120.0, "{name}");
+        }
     }
 
     #[test]

@@ -171,6 +171,7 @@ mod tests {
 
     #[test]
     fn shed_price_is_four_times_the_dearest_stroke() {
-        assert!(SHED_PRICE_PER_PU >= 4.0 * BATTERY_COST_PER_PU2 * 1.5);
+        let stroke_pu = 1.5;
+        assert!(SHED_PRICE_PER_PU >= 4.0 * BATTERY_COST_PER_PU2 * stroke_pu);
     }
 }

@@ -5,122 +5,15 @@
 //! placeholder returned, so that all problems of a file come out in one reading.
 //! The keys asked for are the keys that exist: [`Fields::finish`] reports others.
 
-use std::collections::BTreeMap;
-use std::fmt;
 use std::ops::Range;
 
 use toml::Spanned;
 use toml::de::{DeTable, DeValue};
 
+use super::bounds::Bounds;
+use super::marks::{Marks, Names};
 use super::nearest::suggestion;
 use super::problems::Problem;
-
-/// The values a number may have.
-#[derive(Clone, Copy, Debug)]
-pub(crate) struct Bounds {
-    least: f64,
-    most: f64,
-    above: bool,
-    endless: bool,
-}
-
-impl Bounds {
-    /// From `least` to `most`, both included.
-    pub const fn within(least: f64, most: f64) -> Self {
-        Self {
-            least,
-            most,
-            above: false,
-            endless: false,
-        }
-    }
-
-    /// Above `least`, up to `most`.
-    pub const fn above(least: f64, most: f64) -> Self {
-        Self {
-            least,
-            most,
-            above: true,
-            endless: false,
-        }
-    }
-
-    /// The same, or `inf`.
-    pub const fn or_endless(mut self) -> Self {
-        self.endless = true;
-        self
-    }
-
-    fn hold(self, value: f64) -> bool {
-        let low = if self.above {
-            value > self.least
-        } else {
-            value >= self.least
-        };
-        (low && value <= self.most) || (self.endless && value == f64::INFINITY)
-    }
-}
-
-impl fmt::Display for Bounds {
-    fn fmt(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
-        if self.above {
-            write!(out, "above {} and up to {}", self.least, self.most)?;
-        } else {
-            write!(out, "from {} to {}", self.least, self.most)?;
-        }
-        if self.endless {
-            out.write_str(", or inf")?;
-        }
-        Ok(())
-    }
-}
-
-/// Where the values of one entry stood in the file.
-#[derive(Clone, Debug, Default)]
-pub(crate) struct Marks {
-    /// Place of the entry's heading.
-    pub heading: Range<usize>,
-    /// Whether a value was missing or wrong, so that checks across keys are idle.
-    pub broken: bool,
-    values: BTreeMap<&'static str, Range<usize>>,
-}
-
-impl Marks {
-    /// Marks of an entry that is not there: broken, so that nothing is checked against it.
-    pub fn of_nothing() -> Self {
-        Self {
-            broken: true,
-            ..Self::default()
-        }
-    }
-
-    /// Place of a key's value, or of the heading where the key is absent.
-    pub fn of(&self, key: &str) -> Range<usize> {
-        self.values.get(key).unwrap_or(&self.heading).clone()
-    }
-
-    /// Whether the file gives the key.
-    pub fn has(&self, key: &str) -> bool {
-        self.values.contains_key(key)
-    }
-}
-
-/// Names that can be referred to.
-#[derive(Debug, Default)]
-pub(crate) struct Names {
-    indices: BTreeMap<String, usize>,
-}
-
-impl Names {
-    /// Names in order; of two equal ones the first counts.
-    pub fn of<'a>(names: impl IntoIterator<Item = &'a str>) -> Self {
-        let mut indices = BTreeMap::new();
-        for (index, name) in names.into_iter().enumerate() {
-            indices.entry(name.to_owned()).or_insert(index);
-        }
-        Self { indices }
-    }
-}
 
 /// One table under reading.
 pub(crate) struct Fields<'a, 'i> {
@@ -441,6 +334,7 @@ pub(crate) fn quoted(words: &[&str]) -> String {
 fn to_number(value: &DeValue<'_>) -> Option<f64> {
     match value {
         DeValue::Float(digits) => digits.as_str().parse().ok(),
+        DeValue::Integer(digits) if digits.radix() == 10 => digits.as_str().parse().ok(),
         DeValue::Integer(digits) => i64::from_str_radix(digits.as_str(), digits.radix())
             .ok()
             .map(|whole| whole as f64),

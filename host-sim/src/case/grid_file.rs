@@ -6,8 +6,10 @@
 
 use toml::de::DeTable;
 
+use super::bounds::Bounds;
 use super::defaults;
-use super::fields::{Bounds, Fields, Marks, Names};
+use super::fields::Fields;
+use super::marks::{Marks, Names};
 use super::model::{
     Area, Bus, Feeder, FeederKind, Grid, Line, OnSilence, Restore, Unit, UnitKind, UnitStatus,
 };

@@ -7,17 +7,21 @@
 //! `play_file` (model plus marks of where each value stood) -> `validate` /
 //! `timeline` (checks across entries) -> [`model`].
 
+mod bounds;
 pub mod builtin;
 pub mod capacity;
+pub mod cdf;
 
 pub mod defaults;
 mod fields;
 mod grid_file;
+mod marks;
 pub mod model;
 mod nearest;
 pub mod network;
 mod play_file;
 pub mod problems;
+pub mod starter;
 mod tables;
 mod timeline;
 mod validate;
@@ -56,3 +60,6 @@ fn read_text(path: &Path) -> Result<String, Problems> {
         Problems::without_text(&file, problem)
     })
 }
+
+#[cfg(test)]
+mod tests;

@@ -24,20 +24,34 @@ pub(crate) fn edits(a: &str, b: &str) -> usize {
 }
 
 /// The word of the list nearest to the one found, if any is near enough.
+///
+/// Failing that, the shortest word that holds the one found (`damping` in `load_damping`).
 pub(crate) fn nearest<'a>(
     found: &str,
     words: impl IntoIterator<Item = &'a str>,
 ) -> Option<&'a str> {
-    words
-        .into_iter()
-        .map(|word| (edits(found, word), word))
+    const PART_MIN: usize = 4;
+    let words: Vec<&str> = words.into_iter().collect();
+    let length = |word: &str| word.chars().count();
+    let close = words
+        .iter()
+        .map(|&word| (edits(found, word), word))
         .min_by_key(|&(distance, _)| distance)
-        .filter(|&(distance, word)| 2 * distance <= found.chars().count().max(word.chars().count()))
-        .map(|(_, word)| word)
+        .filter(|&(distance, word)| 2 * distance <= length(found).max(length(word)))
+        .map(|(_, word)| word);
+    let holding = || {
+        let holds = |word: &&&str| length(found) >= PART_MIN && word.contains(found);
+        words
+            .iter()
+            .filter(holds)
+            .copied()
+            .min_by_key(|word| length(word))
+    };
+    close.or_else(holding)
 }
 
 /// `did you mean ...?` or, when nothing is near, the words themselves.
-pub(crate) fn suggestion<'a>(found: &str, noun: &str, words: &[&'a str]) -> String {
+pub(crate) fn suggestion(found: &str, noun: &str, words: &[&str]) -> String {
     const SHOWN: usize = 24;
     match nearest(found, words.iter().copied()) {
         Some(word) => format!("did you mean `{word}`?"),
@@ -66,6 +80,10 @@ mod tests {
         let keys = ["reactance_pu", "rating_mw"];
         assert_eq!(nearest("reactance", keys), Some("reactance_pu"));
         assert_eq!(nearest("zzz", keys), None);
+        assert_eq!(
+            nearest("damping", ["load_damping", "damping_mw_per_hz"]),
+            Some("load_damping")
+        );
         assert!(suggestion("zzz", "key", &keys).contains("`rating_mw`"));
     }
 }

@@ -8,11 +8,13 @@ use std::path::Path;
 
 use toml::de::DeTable;
 
+use super::bounds::Bounds;
 use super::builtin::builtin_grid;
 use super::capacity::fits_largest_steward;
 use super::defaults;
-use super::fields::{Bounds, Fields, Marks, Names};
+use super::fields::Fields;
 use super::grid_file::ANY_MW;
+use super::marks::{Marks, Names};
 use super::model::{Event, Grid, Happening, Links, Play, Run, StewardSettings};
 use super::problems::{Problem, Problems};
 use super::tables::{read_list, read_root, read_table};

@@ -4,7 +4,7 @@
 //! stewards and loads, and logs what cannot happen then: opening an open line,
 //! returning a unit that never left, a schedule on a line that is no tie.
 
-use super::fields::Marks;
+use super::marks::Marks;
 use super::model::{Event, Grid, Happening, Line, Run, UnitStatus};
 use super::problems::Problem;
 

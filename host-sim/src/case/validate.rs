@@ -4,8 +4,8 @@
 //! already marked broken are left alone, and checks of the whole are skipped
 //! where a broken entry would make them guess.
 
-use super::fields::Marks;
 use super::grid_file::GridMarks;
+use super::marks::Marks;
 use super::model::{Bus, Feeder, Grid, Line, Unit, UnitKind, UnitStatus};
 use super::network::check_network;
 use super::problems::Problem;
@@ -230,13 +230,19 @@ fn check_unit(unit: &Unit, place: &Marks, log: &mut Vec<Problem>) {
             .right("say `energy_mwh`, the energy when full");
             log.push(problem);
         }
-        (UnitKind::Battery, Some(_)) | (_, None) => {}
-        (_, Some(_)) => {
+        (UnitKind::Battery, Some(_)) => {}
+        (_, None) if !place.has("energy_start") => {}
+        (_, energy_mwh) => {
+            let key = if energy_mwh.is_some() {
+                "energy_mwh"
+            } else {
+                "energy_start"
+            };
             let problem = Problem::new(
-                place.of("energy_mwh"),
+                place.of(key),
                 format!("unit `{}` stores no energy", unit.name),
             )
-            .found("only a battery has `energy_mwh`")
+            .found(format!("only a battery has `{key}`"))
             .right("take it out, or say `kind = \"battery\"`");
             log.push(problem);
         }

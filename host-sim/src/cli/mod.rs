@@ -13,6 +13,10 @@ use clap::{Parser, Subcommand};
 
 use crate::report::summary::Colour;
 
+pub mod check;
+pub mod import;
+pub mod new;
+
 /// How a command that ran to its end ended.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum Ending {
