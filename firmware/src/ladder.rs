@@ -102,37 +102,22 @@ impl Ladder {
             self.exhausted = false;
         }
         let free = self.rung != Rung::Shed || !found.shedding;
-        if self.is_ripe(settings) && free {
-            self.climb()
-        } else {
-            None
-        }
+        if self.is_ripe(settings) && free { self.climb() } else { None }
     }
 
     fn count(&mut self, found: Finding) {
-        self.proven_ticks = if found.hard {
-            self.proven_ticks.saturating_add(1)
-        } else {
-            0
-        };
+        self.proven_ticks = if found.hard { self.proven_ticks.saturating_add(1) } else { 0 };
         self.persist = if found.hard || found.conditional {
             self.persist.saturating_add(1)
         } else {
             self.persist.saturating_sub(2)
         };
         let witnessed = found.witness && !found.hard;
-        self.witness_ticks = if witnessed {
-            self.witness_ticks.saturating_add(1)
-        } else {
-            0
-        };
+        self.witness_ticks = if witnessed { self.witness_ticks.saturating_add(1) } else { 0 };
     }
 
     fn down(&mut self, settings: &Settings) -> Option<Move> {
-        let lower = self
-            .rung
-            .down()
-            .filter(|rung| rung.number() <= settings.lowest_rung);
+        let lower = self.rung.down().filter(|rung| rung.number() <= settings.lowest_rung);
         let Some(to) = lower else {
             let first = !self.exhausted;
             self.exhausted = true;
@@ -152,10 +137,7 @@ impl Ladder {
 
     /// The one place where the rung changes.
     fn set_rung(&mut self, rung: Rung) {
-        *self = Self {
-            rung,
-            ..Self::new()
-        };
+        *self = Self { rung, ..Self::new() };
     }
 }
 

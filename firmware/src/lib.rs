@@ -1,10 +1,5 @@
 #![no_std]
-#![deny(
-    clippy::unwrap_used,
-    clippy::expect_used,
-    clippy::panic,
-    clippy::indexing_slicing
-)]
+#![deny(clippy::unwrap_used, clippy::expect_used, clippy::panic, clippy::indexing_slicing)]
 //! The steward: the controller of one area of a grid, in fixed memory.
 //!
 //! Contract: frames in, frames out. No clock, no port, no allocation, no

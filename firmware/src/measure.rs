@@ -100,9 +100,7 @@ impl<const B: usize, const X: usize, const R: usize> Measured<B, X, R> {
     pub fn take(&mut self, plan: &Plan<B, X, R>, network: &Network<B, R>, m: &Measurements<'_>) {
         let per_mw = 1.0 / plan.base_mva;
         let power = |reading: Reading, limit: f32| {
-            reading
-                .usable(AGE_MAX, limit * plan.base_mva)
-                .map(|mw| mw * per_mw)
+            reading.usable(AGE_MAX, limit * plan.base_mva).map(|mw| mw * per_mw)
         };
         self.tick = m.tick;
         self.any = true;
@@ -127,12 +125,7 @@ impl<const B: usize, const X: usize, const R: usize> Measured<B, X, R> {
         for (slot, reading) in self.feeder_load.iter_mut().zip(m.feeder_load_mw.iter()) {
             *slot = power(reading, POWER_MAX);
         }
-        for (index, on) in self
-            .unit_in_service
-            .iter_mut()
-            .enumerate()
-            .take(plan.units.len())
-        {
+        for (index, on) in self.unit_in_service.iter_mut().enumerate().take(plan.units.len()) {
             *on = m.unit_in_service.get(index).unwrap_or(false);
         }
     }
@@ -258,24 +251,10 @@ impl<const R: usize> Estimate<R> {
             return Sight::Clear;
         }
         let settings = &plan.settings;
-        let gain = if self.started {
-            settings.filter_gain
-        } else {
-            1.0
-        };
-        let keep = if self.started {
-            settings.envelope_keep
-        } else {
-            0.0
-        };
+        let gain = if self.started { settings.filter_gain } else { 1.0 };
+        let keep = if self.started { settings.envelope_keep } else { 0.0 };
         let raw_load = balance - settings.damping_pu_per_hz * freq_dev_hz;
-        low_pass(
-            &mut self.part.load,
-            &mut self.load_error,
-            raw_load,
-            gain,
-            keep,
-        );
+        low_pass(&mut self.part.load, &mut self.load_error, raw_load, gain, keep);
         let mut angle = [0.0; B];
         network.angles(&injection, plan.buses, &mut angle);
         let sight = self.update_flows(plan, network, measured, &angle, gain, keep);
@@ -294,12 +273,7 @@ impl<const R: usize> Estimate<R> {
     ) -> Sight {
         let mut flow = [0.0; R];
         let mut tree_is_whole = true;
-        let slots = self
-            .part
-            .flow
-            .iter_mut()
-            .zip(&mut self.flow_error)
-            .zip(&mut flow);
+        let slots = self.part.flow.iter_mut().zip(&mut self.flow_error).zip(&mut flow);
         for (index, (line, ((estimate, error), full))) in plan.lines.iter().zip(slots).enumerate() {
             if !network.is_live(index, line) {
                 (*estimate, *error) = (0.0, 0.0);
@@ -348,12 +322,8 @@ fn injections<const B: usize, const X: usize, const R: usize>(
 ) -> Option<([f32; B], f32)> {
     let mut injection = [0.0; B];
     let mut balance = 0.0;
-    for (index, (&output, &counts)) in measured
-        .output
-        .iter()
-        .zip(active)
-        .enumerate()
-        .take(plan.actuators())
+    for (index, (&output, &counts)) in
+        measured.output.iter().zip(active).enumerate().take(plan.actuators())
     {
         if !counts {
             continue;
@@ -365,11 +335,7 @@ fn injections<const B: usize, const X: usize, const R: usize>(
             balance += output;
         }
     }
-    let ties = plan
-        .ties
-        .iter()
-        .zip(&measured.tie_flow)
-        .zip(&measured.tie_closed);
+    let ties = plan.ties.iter().zip(&measured.tie_flow).zip(&measured.tie_closed);
     for ((tie, flow), &closed) in ties {
         let bus = usize::from(tie.bus);
         if closed && network.is_kept(bus) {
@@ -383,13 +349,6 @@ fn injections<const B: usize, const X: usize, const R: usize>(
 
 fn low_pass(estimate: &mut f32, error: &mut f32, raw: f32, gain: f32, keep: f32) {
     let innovation = raw - *estimate;
-    *error = max(
-        if keep > 0.0 { abs(innovation) } else { 0.0 },
-        *error * keep,
-    );
-    *estimate = if gain >= 1.0 {
-        raw
-    } else {
-        *estimate + gain * innovation
-    };
+    *error = max(if keep > 0.0 { abs(innovation) } else { 0.0 }, *error * keep);
+    *estimate = if gain >= 1.0 { raw } else { *estimate + gain * innovation };
 }

@@ -137,11 +137,7 @@ impl TieEnd {
     /// One tick has passed; `asks` says whether this end wants the tie open.
     pub fn pass(&mut self, asks: bool, controllable: bool) {
         self.silent_ticks = self.silent_ticks.saturating_add(1);
-        self.asked_ticks = if asks {
-            self.asked_ticks.saturating_add(1)
-        } else {
-            0
-        };
+        self.asked_ticks = if asks { self.asked_ticks.saturating_add(1) } else { 0 };
         self.controllable = controllable;
         if let Some(theirs) = &self.theirs {
             let [flow, _] = theirs.deviation;
@@ -211,11 +207,7 @@ fn is_sane(terms: &TieTerms, settings: &Settings) -> bool {
     let [flow, angle] = terms.deviation;
     within(flow, 2.0 * settings.tie_band)
         && within(angle, 2.0 * settings.angle_band)
-        && terms
-            .bid
-            .iter()
-            .chain(&terms.bid_before)
-            .all(|&bid| within(bid, PRICE_MAX))
+        && terms.bid.iter().chain(&terms.bid_before).all(|&bid| within(bid, PRICE_MAX))
 }
 
 /// Areas between here and the nearest that leans, given the neighbours' word.
@@ -223,9 +215,5 @@ pub fn help_distance<'a>(rung: Rung, heard: impl Iterator<Item = Option<&'a TieT
     if rung != Rung::Keep {
         return 0;
     }
-    heard
-        .flatten()
-        .map(|terms| terms.distance.saturating_add(1))
-        .min()
-        .unwrap_or(NOBODY)
+    heard.flatten().map(|terms| terms.distance.saturating_add(1)).min().unwrap_or(NOBODY)
 }

@@ -43,11 +43,7 @@ pub struct LoadPart<const R: usize> {
 impl<const R: usize> LoadPart<R> {
     /// All zero.
     pub const fn new() -> Self {
-        Self {
-            load: 0.0,
-            flow: [0.0; R],
-            angle: [0.0; TIES_MAX],
-        }
+        Self { load: 0.0, flow: [0.0; R], angle: [0.0; TIES_MAX] }
     }
 }
 
@@ -169,20 +165,14 @@ impl<const B: usize, const R: usize> Network<B, R> {
             };
             let drop = at(flow, index) / line.susceptance;
             let (from, to) = (usize::from(line.from), usize::from(line.to));
-            let angle = if bus == to {
-                at(out, from) - drop
-            } else {
-                at(out, to) + drop
-            };
+            let angle = if bus == to { at(out, from) - drop } else { at(out, to) + drop };
             put(out, bus, angle);
         }
     }
 
     /// Whether a line is part of the tree.
     pub fn in_tree(&self, line: usize) -> bool {
-        self.parent_line
-            .iter()
-            .any(|&parent| usize::from(parent) == line)
+        self.parent_line.iter().any(|&parent| usize::from(parent) == line)
     }
 
     /// Open a line.
@@ -328,21 +318,16 @@ impl<const B: usize, const R: usize> Network<B, R> {
         let from_side = self.piece_of(&plan.lines, line.from.into());
         let generation = |on_side: bool| {
             let buses = strength.iter().zip(&from_side).zip(&self.kept);
-            buses.fold(0.0, |sum, ((&p, &side), &kept)| {
-                if kept && side == on_side {
-                    sum + p
-                } else {
-                    sum
-                }
-            })
+            buses.fold(
+                0.0,
+                |sum, ((&p, &side), &kept)| {
+                    if kept && side == on_side { sum + p } else { sum }
+                },
+            )
         };
         let keep_from = generation(true) >= generation(false);
         let end = usize::from(if keep_from { line.from } else { line.to });
-        let into_lost = if keep_from {
-            at(&part.flow, index)
-        } else {
-            -at(&part.flow, index)
-        };
+        let into_lost = if keep_from { at(&part.flow, index) } else { -at(&part.flow, index) };
         let root_kept = from_side.get(self.root).copied().unwrap_or(true) == keep_from;
         for (kept, &side) in self.kept.iter_mut().zip(&from_side) {
             *kept = *kept && side == keep_from;

@@ -81,14 +81,7 @@ impl<const B: usize, const X: usize, const R: usize> Node<B, X, R> {
 
     /// Take in bytes from the wire.
     pub fn receive(&mut self, mut bytes: &[u8]) {
-        let Self {
-            steward,
-            decoder,
-            key,
-            peers,
-            counts,
-            ..
-        } = self;
+        let Self { steward, decoder, key, peers, counts, .. } = self;
         let address = steward.plan().address;
         let broken_before = broken(decoder);
         while let Some(raw) = decoder.feed(&mut bytes) {
@@ -111,16 +104,7 @@ impl<const B: usize, const X: usize, const R: usize> Node<B, X, R> {
 
     /// Move one tick on; `out` gets every frame with the address it is for.
     pub fn tick(&mut self, tick: u32, out: &mut dyn FnMut(u8, &[u8])) {
-        let Self {
-            steward,
-            key,
-            boot_id,
-            peers,
-            counts,
-            raw,
-            wire,
-            ..
-        } = self;
+        let Self { steward, key, boot_id, peers, counts, raw, wire, .. } = self;
         let from = steward.plan().address;
         let seen = *counts;
         steward.tick(tick, &mut |say| {
@@ -160,11 +144,7 @@ fn broken<const N: usize>(decoder: &FrameDecoder<N>) -> u32 {
 /// The entry of a peer, made if there is room.
 fn peer_of<const N: usize>(peers: &mut Vec<Peer, N>, address: u8) -> Option<&mut Peer> {
     if !peers.iter().any(|peer| peer.address == address) {
-        let _full = peers.push(Peer {
-            address,
-            boot_id: 0,
-            counter: 0,
-        });
+        let _full = peers.push(Peer { address, boot_id: 0, counter: 0 });
     }
     peers.iter_mut().find(|peer| peer.address == address)
 }

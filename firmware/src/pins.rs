@@ -50,11 +50,7 @@ impl<P: OutputPin> Heartbeat<P> {
     /// Errors: the pin's own.
     pub fn beat(&mut self) -> Result<(), P::Error> {
         self.on = !self.on;
-        if self.on {
-            self.pin.set_high()
-        } else {
-            self.pin.set_low()
-        }
+        if self.on { self.pin.set_high() } else { self.pin.set_low() }
     }
 }
 

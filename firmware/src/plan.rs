@@ -124,11 +124,7 @@ impl<const B: usize, const X: usize, const R: usize> Plan<B, X, R> {
         if !reader.is_done() {
             return Err(Refusal::Malformed);
         }
-        if self.is_in_range() {
-            Ok(())
-        } else {
-            Err(Refusal::Range)
-        }
+        if self.is_in_range() { Ok(()) } else { Err(Refusal::Range) }
     }
 
     fn take_header(&mut self, header: &Header<'_>) -> Result<(), Refusal> {
@@ -143,11 +139,7 @@ impl<const B: usize, const X: usize, const R: usize> Plan<B, X, R> {
         if self.buses == 0 || header.address == 0 || !base_fits {
             return Err(Refusal::Range);
         }
-        if settings_in_range(&header.settings) {
-            Ok(())
-        } else {
-            Err(Refusal::Range)
-        }
+        if settings_in_range(&header.settings) { Ok(()) } else { Err(Refusal::Range) }
     }
 
     fn take_sensitivity(&mut self, reader: &mut CharterReader<'_>) -> Result<(), Refusal> {
@@ -164,11 +156,7 @@ impl<const B: usize, const X: usize, const R: usize> Plan<B, X, R> {
                 }
             }
         }
-        if left == 0 {
-            Ok(())
-        } else {
-            Err(Refusal::Malformed)
-        }
+        if left == 0 { Ok(()) } else { Err(Refusal::Malformed) }
     }
 
     fn is_in_range(&self) -> bool {
@@ -212,10 +200,7 @@ impl<const B: usize, const X: usize, const R: usize> Plan<B, X, R> {
                 && positive(feeder.price)
                 && positive(feeder.curvature)
         });
-        let meters = self
-            .meters
-            .iter()
-            .all(|meter| bus(meter.bus) && positive(meter.weight));
+        let meters = self.meters.iter().all(|meter| bus(meter.bus) && positive(meter.weight));
         lines && ties && units && feeders && meters && !self.meters.is_empty()
     }
 }
@@ -245,24 +230,12 @@ fn settings_in_range(s: &Settings) -> bool {
         && share(s.envelope_keep)
         && share(s.agreement_relax)
         && share(s.climb_margin)
-        && [
-            s.tick_s,
-            s.tie_price,
-            s.tie_curvature,
-            s.agreement_penalty,
-            s.proof_threshold,
-        ]
-        .into_iter()
-        .all(positive)
-        && [
-            s.dual_clamp,
-            s.tie_band,
-            s.angle_band,
-            s.climb_tolerance,
-            s.return_free_hz,
-        ]
-        .into_iter()
-        .all(positive)
+        && [s.tick_s, s.tie_price, s.tie_curvature, s.agreement_penalty, s.proof_threshold]
+            .into_iter()
+            .all(positive)
+        && [s.dual_clamp, s.tie_band, s.angle_band, s.climb_tolerance, s.return_free_hz]
+            .into_iter()
+            .all(positive)
         && (0.0..VALUE_MAX).contains(&s.damping_pu_per_hz)
         && (0.0..VALUE_MAX).contains(&s.return_ramp)
         && s.iterations > 0

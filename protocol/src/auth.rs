@@ -63,11 +63,7 @@ impl Key {
 
     /// Whether `tag` is the tag of `bytes`; takes the same time wherever they differ.
     pub fn verify(&self, bytes: &[u8], tag: &[u8; TAG_BYTES]) -> bool {
-        self.0
-            .clone()
-            .chain_update(bytes)
-            .verify_truncated_left(tag)
-            .is_ok()
+        self.0.clone().chain_update(bytes).verify_truncated_left(tag).is_ok()
     }
 }
 
@@ -105,31 +101,15 @@ mod tests {
     /// 6, from memory, recomputed with an independent implementation.
     fn rfc_4231() -> Vec<(Vec<u8>, Vec<u8>, &'static str)> {
         vec![
-            (
-                vec![0x0B; 20],
-                b"Hi There".to_vec(),
-                "b0344c61d8db38535ca8afceaf0bf12b",
-            ),
+            (vec![0x0B; 20], b"Hi There".to_vec(), "b0344c61d8db38535ca8afceaf0bf12b"),
             (
                 b"Jefe".to_vec(),
                 b"what do ya want for nothing?".to_vec(),
                 "5bdcc146bf60754e6a042426089575c7",
             ),
-            (
-                vec![0xAA; 20],
-                vec![0xDD; 50],
-                "773ea91e36800e46854db8ebd09181a7",
-            ),
-            (
-                (1..=25).collect(),
-                vec![0xCD; 50],
-                "82558a389a443c0ea4cc819899f2083a",
-            ),
-            (
-                vec![0x0C; 20],
-                b"Test With Truncation".to_vec(),
-                "a3b6167473100ee06e0c796c2955552b",
-            ),
+            (vec![0xAA; 20], vec![0xDD; 50], "773ea91e36800e46854db8ebd09181a7"),
+            ((1..=25).collect(), vec![0xCD; 50], "82558a389a443c0ea4cc819899f2083a"),
+            (vec![0x0C; 20], b"Test With Truncation".to_vec(), "a3b6167473100ee06e0c796c2955552b"),
             (
                 vec![0xAA; 131],
                 b"Test Using Larger Than Block-Size Key - Hash Key First".to_vec(),

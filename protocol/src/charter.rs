@@ -238,10 +238,7 @@ impl<'b> CharterWriter<'b> {
         let body = buffer.get(..used).ok_or(Refusal::Capacity)?;
         let sum = CRC32.checksum(body).to_le_bytes();
         let end = used + sum.len();
-        buffer
-            .get_mut(used..end)
-            .ok_or(Refusal::Capacity)?
-            .copy_from_slice(&sum);
+        buffer.get_mut(used..end).ok_or(Refusal::Capacity)?.copy_from_slice(&sum);
         buffer.get(..end).ok_or(Refusal::Capacity)
     }
 }
@@ -273,11 +270,7 @@ impl<'a> CharterReader<'a> {
             && usize::from(header.units) <= limits::UNITS_MAX
             && usize::from(header.feeders) <= limits::FEEDERS_MAX
             && header.meters <= header.buses;
-        if fits {
-            Ok((header, reader))
-        } else {
-            Err(Refusal::Capacity)
-        }
+        if fits { Ok((header, reader)) } else { Err(Refusal::Capacity) }
     }
 
     /// Take the next record.
@@ -295,11 +288,7 @@ impl<'a> CharterReader<'a> {
     /// Errors: [`Refusal::Malformed`], [`Refusal::Range`].
     pub fn take_finite(&mut self) -> Result<f32, Refusal> {
         let value: f32 = self.take()?;
-        if value.is_finite() {
-            Ok(value)
-        } else {
-            Err(Refusal::Range)
-        }
+        if value.is_finite() { Ok(value) } else { Err(Refusal::Range) }
     }
 
     /// Whether everything has been taken.

@@ -16,12 +16,7 @@ const FULL: u8 = 0xFF;
 
 /// Most bytes that `raw_len` bytes become, delimiter not counted.
 pub const fn encoded_max(raw_len: usize) -> usize {
-    raw_len
-        + if raw_len == 0 {
-            1
-        } else {
-            raw_len.div_ceil(254)
-        }
+    raw_len + if raw_len == 0 { 1 } else { raw_len.div_ceil(254) }
 }
 
 /// Encode `raw` into `wire` and return the number of bytes written.
@@ -110,29 +105,14 @@ mod tests {
             (std::vec![0], std::vec![1, 1]),
             (std::vec![0, 0], std::vec![1, 1, 1]),
             (std::vec![0, 0x11, 0], std::vec![1, 2, 0x11, 1]),
-            (
-                std::vec![0x11, 0x22, 0, 0x33],
-                std::vec![3, 0x11, 0x22, 2, 0x33]
-            ),
-            (
-                std::vec![0x11, 0x22, 0x33, 0x44],
-                std::vec![5, 0x11, 0x22, 0x33, 0x44]
-            ),
+            (std::vec![0x11, 0x22, 0, 0x33], std::vec![3, 0x11, 0x22, 2, 0x33]),
+            (std::vec![0x11, 0x22, 0x33, 0x44], std::vec![5, 0x11, 0x22, 0x33, 0x44]),
             (std::vec![0x11, 0, 0, 0], std::vec![2, 0x11, 1, 1, 1]),
             (run(1, 0xFE), join(&[&[0xFF], &run(1, 0xFE)])),
-            (
-                join(&[&[0], &run(1, 0xFE)]),
-                join(&[&[1, 0xFF], &run(1, 0xFE)])
-            ),
+            (join(&[&[0], &run(1, 0xFE)]), join(&[&[1, 0xFF], &run(1, 0xFE)])),
             (run(1, 0xFF), join(&[&[0xFF], &run(1, 0xFE), &[2, 0xFF]])),
-            (
-                join(&[&run(2, 0xFF), &[0]]),
-                join(&[&[0xFF], &run(2, 0xFF), &[1, 1]])
-            ),
-            (
-                join(&[&run(3, 0xFF), &[0, 1]]),
-                join(&[&[0xFE], &run(3, 0xFF), &[2, 1]])
-            ),
+            (join(&[&run(2, 0xFF), &[0]]), join(&[&[0xFF], &run(2, 0xFF), &[1, 1]])),
+            (join(&[&run(3, 0xFF), &[0, 1]]), join(&[&[0xFE], &run(3, 0xFF), &[2, 1]])),
             (
                 std::vec![0x45, 0, 0, 0x2C, 0x4C, 0x79, 0, 0, 0x40, 6, 0x4F, 0x37],
                 std::vec![2, 0x45, 1, 4, 0x2C, 0x4C, 0x79, 1, 5, 0x40, 6, 0x4F, 0x37],
@@ -160,14 +140,7 @@ mod tests {
 
     #[test]
     fn refuses_a_zero_inside_and_a_block_over_the_end() {
-        for bad in [
-            &[3, 0x11, 0][..],
-            &[0],
-            &[1, 0, 1],
-            &[4, 0x11, 0x22],
-            &[2],
-            &[0xFF; 254],
-        ] {
+        for bad in [&[3, 0x11, 0][..], &[0], &[1, 0, 1], &[4, 0x11, 0x22], &[2], &[0xFF; 254]] {
             assert_eq!(decode_in_place(&mut bad.to_vec()), None, "{bad:02X?}");
         }
     }

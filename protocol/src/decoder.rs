@@ -27,14 +27,7 @@ pub struct FrameDecoder<const N: usize> {
 impl<const N: usize> FrameDecoder<N> {
     /// An empty decoder.
     pub const fn new() -> Self {
-        Self {
-            buffer: [0; N],
-            used: 0,
-            skipping: false,
-            frames: 0,
-            overlong: 0,
-            undecodable: 0,
-        }
+        Self { buffer: [0; N], used: 0, skipping: false, frames: 0, overlong: 0, undecodable: 0 }
     }
 
     /// Use bytes up to the end of the next frame and hand it out.

@@ -85,10 +85,9 @@ impl fmt::Display for FrameError {
         match self {
             FrameError::Length => f.write_str("frame too short or too long"),
             FrameError::Checksum => f.write_str("wrong checksum"),
-            FrameError::Version(theirs) => write!(
-                f,
-                "frame of protocol version {theirs}, this is version {PROTOCOL_VERSION}"
-            ),
+            FrameError::Version(theirs) => {
+                write!(f, "frame of protocol version {theirs}, this is version {PROTOCOL_VERSION}")
+            }
             FrameError::Tag => f.write_str("wrong tag: another key, or a forged frame"),
             FrameError::Payload(PayloadError::UnknownId(id)) => {
                 write!(f, "no message has the id 0x{id:02X}")
@@ -148,13 +147,8 @@ pub fn seal<'w>(
 
 /// Write header and payload to the start of `raw` and return where they end.
 fn write_body(header: &Header, message: &Message<'_>, raw: &mut [u8]) -> Result<usize, SealError> {
-    let (start, room) = raw
-        .split_first_chunk_mut::<HEADER_BYTES>()
-        .ok_or(SealError::Raw)?;
-    *start = header_bytes(&Header {
-        id: message.id(),
-        ..*header
-    });
+    let (start, room) = raw.split_first_chunk_mut::<HEADER_BYTES>().ok_or(SealError::Raw)?;
+    *start = header_bytes(&Header { id: message.id(), ..*header });
     let payload_len = message.encode(room).map_err(|_| SealError::Raw)?.len();
     if payload_len > PAYLOAD_MAX {
         return Err(SealError::Payload);
@@ -168,10 +162,8 @@ fn write_at<const N: usize>(
     start: usize,
     bytes: &[u8; N],
 ) -> Result<(), SealError> {
-    let room = raw
-        .get_mut(start..)
-        .and_then(|rest| rest.first_chunk_mut::<N>())
-        .ok_or(SealError::Raw)?;
+    let room =
+        raw.get_mut(start..).and_then(|rest| rest.first_chunk_mut::<N>()).ok_or(SealError::Raw)?;
     *room = *bytes;
     Ok(())
 }
@@ -188,18 +180,12 @@ pub fn open<'r>(raw: &'r [u8], key: &Key) -> Result<(Header, Message<'r>), Frame
     if raw.len() < OVERHEAD_BYTES || raw.len() > FRAME_MAX {
         return Err(FrameError::Length);
     }
-    let (tagged, sum) = raw
-        .split_last_chunk::<CRC_BYTES>()
-        .ok_or(FrameError::Length)?;
+    let (tagged, sum) = raw.split_last_chunk::<CRC_BYTES>().ok_or(FrameError::Length)?;
     if CRC32.checksum(tagged) != u32::from_le_bytes(*sum) {
         return Err(FrameError::Checksum);
     }
-    let (body, tag) = tagged
-        .split_last_chunk::<TAG_BYTES>()
-        .ok_or(FrameError::Length)?;
-    let (start, payload) = body
-        .split_first_chunk::<HEADER_BYTES>()
-        .ok_or(FrameError::Length)?;
+    let (body, tag) = tagged.split_last_chunk::<TAG_BYTES>().ok_or(FrameError::Length)?;
+    let (start, payload) = body.split_first_chunk::<HEADER_BYTES>().ok_or(FrameError::Length)?;
     let (version, header) = header_of(start);
     if version != PROTOCOL_VERSION {
         return Err(FrameError::Version(version));
@@ -215,8 +201,7 @@ pub fn open<'r>(raw: &'r [u8], key: &Key) -> Result<(Header, Message<'r>), Frame
 ///
 /// For routing and counting only: a receiver acts on [`open`] alone.
 pub fn peek(raw: &[u8]) -> Option<Header> {
-    raw.first_chunk::<HEADER_BYTES>()
-        .map(|start| header_of(start).1)
+    raw.first_chunk::<HEADER_BYTES>().map(|start| header_of(start).1)
 }
 
 /// The header's bytes, version first.
@@ -246,24 +231,7 @@ fn header_bytes(header: &Header) -> [u8; HEADER_BYTES] {
 
 /// Version and header of the bytes.
 fn header_of(bytes: &[u8; HEADER_BYTES]) -> (u8, Header) {
-    let &[
-        version,
-        id,
-        from,
-        to,
-        b0,
-        b1,
-        b2,
-        b3,
-        p0,
-        p1,
-        p2,
-        p3,
-        c0,
-        c1,
-        c2,
-        c3,
-    ] = bytes;
+    let &[version, id, from, to, b0, b1, b2, b3, p0, p1, p2, p3, c0, c1, c2, c3] = bytes;
     let header = Header {
         id,
         from,

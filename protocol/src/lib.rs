@@ -1,10 +1,5 @@
 #![no_std]
-#![deny(
-    clippy::unwrap_used,
-    clippy::expect_used,
-    clippy::panic,
-    clippy::indexing_slicing
-)]
+#![deny(clippy::unwrap_used, clippy::expect_used, clippy::panic, clippy::indexing_slicing)]
 //! What stewards, plant and host say to each other.
 //!
 //! Contract: bytes in, values out, and back. Nothing here allocates, panics,

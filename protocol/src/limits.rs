@@ -44,7 +44,4 @@ pub const WIRE_MAX: usize = FRAME_MAX + FRAME_MAX.div_ceil(254) + 1;
 /// Largest payload of a charter or proof part, chosen so that the frame fits a 512-byte buffer.
 pub const PART_MAX: usize = 400;
 
-const _: () = assert!(
-    BUSES_MAX <= 255 && LINES_MAX <= 255 && TIES_MAX <= 255,
-    "indices are u8"
-);
+const _: () = assert!(BUSES_MAX <= 255 && LINES_MAX <= 255 && TIES_MAX <= 255, "indices are u8");

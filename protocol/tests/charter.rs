@@ -96,10 +96,7 @@ fn write_charter(writer: &mut CharterWriter<'_>) -> Result<(), Refusal> {
         switched: true,
         automatic: false,
     })?;
-    writer.put(&charter::Meter {
-        bus: 0,
-        weight: 1.0,
-    })?;
+    writer.put(&charter::Meter { bus: 0, weight: 1.0 })?;
     writer.put(&0.1f32)
 }
 

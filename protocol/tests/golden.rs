@@ -71,16 +71,8 @@ fn plain_example(name: &str) -> Option<Message<'static>> {
         }),
         "Run" => Message::Run(Run { charter: HASH }),
         "Stop" => Message::Stop(Stop { tick: 300 }),
-        "Schedule" => Message::Schedule(Schedule {
-            tie: 2,
-            export_mw: -45.5,
-            ramp_ticks: 300,
-        }),
-        "BasePoint" => Message::BasePoint(BasePoint {
-            unit: 3,
-            base_mw: 250.0,
-            ramp_ticks: 0,
-        }),
+        "Schedule" => Message::Schedule(Schedule { tie: 2, export_mw: -45.5, ramp_ticks: 300 }),
+        "BasePoint" => Message::BasePoint(BasePoint { unit: 3, base_mw: 250.0, ramp_ticks: 0 }),
         "Restore" => Message::Restore(Restore { tick: 9 }),
         "TieTerms" => Message::TieTerms(TieTerms {
             tie: 3,
@@ -107,10 +99,7 @@ fn with_example<R>(name: &str, use_it: impl FnOnce(Message<'_>) -> R) -> R {
     let mut room = [[0; 16]; 9];
     let [b0, b1, b2, b3, b4, b5, b6, b7, b8] = &mut room;
     let fresh = Reading::fresh;
-    let old = Reading {
-        value: -30.25,
-        age_ticks: 1,
-    };
+    let old = Reading { value: -30.25, age_ticks: 1 };
     let message = match name {
         "Measurements" => Message::Measurements(Measurements {
             tick: 7,

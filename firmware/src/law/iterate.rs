@@ -51,13 +51,7 @@ pub struct Iterate<const X: usize, const R: usize> {
 impl<const X: usize, const R: usize> Iterate<X, R> {
     /// Cold start.
     pub const fn new() -> Self {
-        Self {
-            x: [0.0; X],
-            y: [0.0; R],
-            v: [0.0; R],
-            ax: [0.0; R],
-            momentum: 0,
-        }
+        Self { x: [0.0; X], y: [0.0; R], v: [0.0; R], ax: [0.0; R], momentum: 0 }
     }
 
     /// Forget the duals.
@@ -79,13 +73,20 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
         &self.y
     }
 
-    /// Make `count` steps.
+    /// Make `count` steps of length `sigma`.
     ///
     /// Cost: `count` times (4 rows x cols + 8 rows + 6 cols) flops.
-    pub fn run(&mut self, scaled: &Scaled<X, R>, limits: &Limits<X, R>, clamp: f32, count: u16) {
+    pub fn run(
+        &mut self,
+        scaled: &Scaled<X, R>,
+        limits: &Limits<X, R>,
+        sigma: f32,
+        clamp: f32,
+        count: u16,
+    ) {
         for _ in 0..count {
             self.minimise(scaled, limits);
-            self.ascend(scaled, limits, clamp);
+            self.ascend(scaled, limits, sigma, clamp);
         }
     }
 
@@ -103,8 +104,7 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
     }
 
     /// Projected ascent on the duals, with momentum and restart.
-    fn ascend(&mut self, scaled: &Scaled<X, R>, limits: &Limits<X, R>, clamp: f32) {
-        let sigma = scaled.sigma;
+    fn ascend(&mut self, scaled: &Scaled<X, R>, limits: &Limits<X, R>, sigma: f32, clamp: f32) {
         let inverse = 1.0 / sigma;
         let mut next = [0.0; R];
         let mut turn = 0.0;
@@ -115,23 +115,9 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
             *next = clip(sigma * (wish - clip(wish, low, high)), -clamp, clamp);
             turn += (v - *next) * (*next - y);
         }
-        let beta = if turn > 0.0 {
-            0.0
-        } else {
-            super::kernel::at(&MOMENTUM, self.momentum)
-        };
-        self.momentum = if turn > 0.0 {
-            0
-        } else {
-            (self.momentum + 1).min(MOMENTUM_LEN - 1)
-        };
-        for ((v, y), &next) in self
-            .v
-            .iter_mut()
-            .zip(&mut self.y)
-            .zip(&next)
-            .take(scaled.rows)
-        {
+        let beta = if turn > 0.0 { 0.0 } else { super::kernel::at(&MOMENTUM, self.momentum) };
+        self.momentum = if turn > 0.0 { 0 } else { (self.momentum + 1).min(MOMENTUM_LEN - 1) };
+        for ((v, y), &next) in self.v.iter_mut().zip(&mut self.y).zip(&next).take(scaled.rows) {
             *v = next + beta * (next - *y);
             *y = next;
         }

@@ -85,12 +85,7 @@ pub fn entry<const R: usize, const C: usize>(
     row: usize,
     col: usize,
 ) -> f32 {
-    a.data
-        .0
-        .get(col)
-        .and_then(|column| column.get(row))
-        .copied()
-        .unwrap_or(0.0)
+    a.data.0.get(col).and_then(|column| column.get(row)).copied().unwrap_or(0.0)
 }
 
 /// Inner product over the shorter of two slices.
@@ -116,12 +111,7 @@ pub fn mat_vec<const R: usize, const C: usize>(
     cols: usize,
     out: &mut [f32; R],
 ) {
-    const {
-        assert!(
-            R.is_multiple_of(LANES),
-            "make the row capacity a multiple of eight"
-        )
-    };
+    const { assert!(R.is_multiple_of(LANES), "make the row capacity a multiple of eight") };
     let blocks = out.as_chunks_mut::<LANES>().0.iter_mut();
     for (block, sums) in blocks.enumerate().take(rows.div_ceil(LANES)) {
         let mut acc = [0.0_f32; LANES];

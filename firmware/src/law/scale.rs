@@ -54,7 +54,10 @@ pub struct Scaled<const X: usize, const R: usize> {
     pub(crate) cols: usize,
     pub(crate) rows: usize,
     pub(crate) eqs: usize,
+    /// Step while every open column may move.
     pub(crate) sigma: f32,
+    /// Step while the columns from `pinned` on stand still (the shadow's ties).
+    pub(crate) sigma_pinned: f32,
 }
 
 impl<const X: usize, const R: usize> Scaled<X, R> {
@@ -71,6 +74,7 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
             rows: 0,
             eqs: 0,
             sigma: 1.0,
+            sigma_pinned: 1.0,
         }
     }
 
@@ -97,9 +101,17 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
     /// Scale the physical matrix that was filled in.
     ///
     /// Shapes: `curvature` and `columns` one entry per unknown; the first `eqs`
-    /// of `rows` rows are equalities (at most [`EQUALITIES_MAX`]).
-    /// Cost: about 2 (eqs^2 + 42) rows x cols flops.
-    pub fn scale(&mut self, curvature: &[f32], columns: &[Column], rows: usize, eqs: usize) {
+    /// of `rows` rows are equalities (at most [`EQUALITIES_MAX`]); columns from
+    /// `pinned` on stand still in the shadow.
+    /// Cost: about 2 (eqs^2 + 82) rows x cols flops.
+    pub fn scale(
+        &mut self,
+        curvature: &[f32],
+        columns: &[Column],
+        rows: usize,
+        eqs: usize,
+        pinned: usize,
+    ) {
         self.cols = columns.len().min(X);
         self.rows = rows.min(R);
         self.eqs = eqs.min(EQUALITIES_MAX).min(self.rows);
@@ -108,7 +120,8 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
         self.orthonormalise();
         self.normalise_lines();
         self.untranspose();
-        self.sigma = self.step();
+        self.sigma = self.step(self.cols);
+        self.sigma_pinned = self.step(pinned.min(self.cols));
     }
 
     fn scale_columns(&mut self, curvature: &[f32], columns: &[Column]) {
@@ -121,11 +134,7 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
                 *own = kind == Column::Own;
             }
             for (i, value) in column.iter_mut().enumerate() {
-                *value = if kind == Column::Closed || i >= rows {
-                    0.0
-                } else {
-                    *value / s
-                };
+                *value = if kind == Column::Closed || i >= rows { 0.0 } else { *value / s };
             }
         }
     }
@@ -165,14 +174,9 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
                 subtract(t_row, share, t_earlier);
             }
             let left = sqrt(own_dot(row, row, own));
-            let norm = max(
-                max(left, ROW_FLOOR * original),
-                max(ROW_FLOOR * whole, 1e-6),
-            );
+            let norm = max(max(left, ROW_FLOOR * original), max(ROW_FLOOR * whole, 1e-6));
             let norm = if whole > 0.0 { norm } else { 1.0 };
-            row.iter_mut()
-                .chain(t_row.iter_mut())
-                .for_each(|x| *x /= norm);
+            row.iter_mut().chain(t_row.iter_mut()).for_each(|x| *x /= norm);
         }
     }
 
@@ -191,8 +195,8 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
         }
     }
 
-    /// Step length from the largest eigenvalue of `A A'`.
-    fn step(&self) -> f32 {
+    /// Step length from the largest eigenvalue of `A A'` over the first `cols` columns.
+    fn step(&self, cols: usize) -> f32 {
         let mut w = [0.0; R];
         for (i, value) in w.iter_mut().enumerate().take(self.rows) {
             // Any start that is not regular will do; five and seven share no factor.
@@ -201,12 +205,14 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
         let mut u = [0.0; X];
         let mut eigenvalue = 0.0;
         for _ in 0..POWER_STEPS {
-            mat_vec(&self.at, &w, self.cols, self.rows, &mut u);
+            mat_vec(&self.at, &w, cols, self.rows, &mut u);
+            // The product works in whole blocks; what lies beyond the columns does not count.
+            u.iter_mut().skip(cols).for_each(|x| *x = 0.0);
             let size = dot(&w, &w);
             if size > 0.0 {
                 eigenvalue = dot(&u, &u) / size;
             }
-            mat_vec(&self.a, &u, self.rows, self.cols, &mut w);
+            mat_vec(&self.a, &u, self.rows, cols, &mut w);
             let most = max_abs(&w);
             if most > 0.0 {
                 w.iter_mut().for_each(|x| *x /= most);
@@ -272,13 +278,7 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
             put(&mut eq, i, residual);
             worst = max(super::kernel::abs(residual), worst);
         }
-        let lines = ax
-            .iter()
-            .zip(low)
-            .zip(high)
-            .zip(&self.e)
-            .take(self.rows)
-            .skip(self.eqs);
+        let lines = ax.iter().zip(low).zip(high).zip(&self.e).take(self.rows).skip(self.eqs);
         for (((value, l), h), e) in lines {
             worst = max(max(l - value, value - h) / e, worst);
         }
@@ -294,10 +294,7 @@ impl<const X: usize, const R: usize> Default for Scaled<X, R> {
 
 fn own_dot(a: &[f32], b: &[f32], own: &[bool]) -> f32 {
     let pairs = a.iter().zip(b).zip(own);
-    pairs.fold(
-        0.0,
-        |sum, ((x, y), &counts)| if counts { sum + x * y } else { sum },
-    )
+    pairs.fold(0.0, |sum, ((x, y), &counts)| if counts { sum + x * y } else { sum })
 }
 
 fn subtract(from: &mut [f32], share: f32, row: &[f32]) {

@@ -66,10 +66,7 @@ impl<const X: usize> Feeders<X> {
 
     /// Total load off by order, pu.
     pub fn total(&self, count: usize) -> f32 {
-        self.written
-            .iter()
-            .take(count)
-            .fold(0.0, |sum, shed| sum + shed)
+        self.written.iter().take(count).fold(0.0, |sum, shed| sum + shed)
     }
 
     /// Feeders held for the operator, one bit each.
@@ -78,9 +75,7 @@ impl<const X: usize> Feeders<X> {
             .iter()
             .take(64)
             .enumerate()
-            .fold(0, |bits, (index, &locked)| {
-                bits | (u64::from(locked) << index)
-            })
+            .fold(0, |bits, (index, &locked)| bits | (u64::from(locked) << index))
     }
 
     /// Range of a feeder on `shed`, given the load it would take off now.
@@ -114,11 +109,7 @@ impl<const X: usize> Feeders<X> {
         now: FeederTick,
     ) {
         let calm = now.violation < plan.settings.climb_tolerance;
-        self.calm_ticks = if calm {
-            self.calm_ticks.saturating_add(1)
-        } else {
-            0
-        };
+        self.calm_ticks = if calm { self.calm_ticks.saturating_add(1) } else { 0 };
         self.wait_s = max(self.wait_s - plan.settings.tick_s, 0.0);
         self.write_continuous(plan, wish, boxes, now.freq_dev_hz);
         if now.rung == Rung::Shed {
@@ -143,12 +134,7 @@ impl<const X: usize> Feeders<X> {
         let settings = &plan.settings;
         let continuous = |index: usize, feeder: &Feeder| !feeder.switched && index < X;
         let (mut before, mut wished, mut room) = (0.0, 0.0, 0.0);
-        for (index, _) in plan
-            .feeders
-            .iter()
-            .enumerate()
-            .filter(|&(i, f)| continuous(i, f))
-        {
+        for (index, _) in plan.feeders.iter().enumerate().filter(|&(i, f)| continuous(i, f)) {
             before += at(&self.written, index);
             wished += at(wish, index);
             room += max(at(&self.written, index) - at(wish, index), 0.0);
@@ -157,25 +143,12 @@ impl<const X: usize> Feeders<X> {
         let least = before - settings.return_ramp * settings.tick_s;
         let excess = if free { 0.0 } else { max(least - wished, 0.0) };
         // Only the excess over the law's own total is held; redistribution is free.
-        let share = if room > 0.0 {
-            min(excess / room, 1.0)
-        } else {
-            0.0
-        };
-        for (index, _) in plan
-            .feeders
-            .iter()
-            .enumerate()
-            .filter(|&(i, f)| continuous(i, f))
-        {
+        let share = if room > 0.0 { min(excess / room, 1.0) } else { 0.0 };
+        for (index, _) in plan.feeders.iter().enumerate().filter(|&(i, f)| continuous(i, f)) {
             let (wished, written) = (at(wish, index), at(&self.written, index));
             let held = wished + share * max(written - wished, 0.0);
             let (_, high) = boxes.get(plan.units.len() + index);
-            put(
-                &mut self.written,
-                index,
-                clip(held, 0.0, max(high, written)),
-            );
+            put(&mut self.written, index, clip(held, 0.0, max(high, written)));
         }
     }
 
@@ -192,24 +165,14 @@ impl<const X: usize> Feeders<X> {
         let mut missing = 0.0;
         let closed =
             |s: &Self, index: usize, feeder: &Feeder| feeder.switched && !flag(&s.opened, index);
-        for (index, _) in plan
-            .feeders
-            .iter()
-            .enumerate()
-            .filter(|&(i, f)| closed(self, i, f))
-        {
+        for (index, _) in plan.feeders.iter().enumerate().filter(|&(i, f)| closed(self, i, f)) {
             missing += at(wish, index);
         }
         if missing < NOTHING {
             return;
         }
         let mut best: Option<(usize, f32)> = None;
-        for (index, _) in plan
-            .feeders
-            .iter()
-            .enumerate()
-            .filter(|&(i, f)| closed(self, i, f))
-        {
+        for (index, _) in plan.feeders.iter().enumerate().filter(|&(i, f)| closed(self, i, f)) {
             let (_, load) = boxes.get(plan.units.len() + index);
             if at(wish, index) < NOTHING || load < NOTHING {
                 continue;

@@ -18,6 +18,8 @@ const BETWEEN_SLACK: f32 = 0.001;
 const STEADY: f32 = 0.03;
 /// Without open ties a dual this large, as a share of the clamp, may be left from an old need.
 const STALE_SHARE: f32 = 0.25;
+/// The same share for the shadow, which often looks at a rung that is far from possible.
+const SHADOW_STALE_SHARE: f32 = 0.05;
 /// ... if the rows are this far from any proof, pu.
 const STALE_SLACK: f32 = -0.05;
 /// Seconds between two resets.
@@ -39,6 +41,7 @@ pub struct Proof<const X: usize, const R: usize> {
 pub struct Judgement<const X: usize, const R: usize> {
     last: [f32; R],
     pause_ticks: u16,
+    shadow_pause_ticks: u16,
     /// Shortfall proven in this tick with all the help that could come, pu.
     pub proven: f32,
     /// Estimation errors allowed for in this tick.
@@ -59,16 +62,13 @@ impl<const X: usize, const R: usize> Judgement<X, R> {
         Self {
             last: [0.0; R],
             pause_ticks: 0,
+            shadow_pause_ticks: 0,
             proven: -1.0,
             error: [0.0; R],
             row_low: [0.0; R],
             row_high: [0.0; R],
             rung: Rung::Keep,
-            proof: Proof {
-                dual: [0.0; R],
-                boxes: Boxes::new(),
-                shortfall: -1.0,
-            },
+            proof: Proof { dual: [0.0; R], boxes: Boxes::new(), shortfall: -1.0 },
         }
     }
 }
@@ -98,8 +98,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         if !clear {
             return (false, false);
         }
-        self.rows
-            .errors(&self.plan, &self.estimate, &mut self.judgement.error);
+        self.rows.errors(&self.plan, &self.estimate, &mut self.judgement.error);
         let most = self.with_all_help();
         let (between, theirs) = self.with_help_delivered();
         let leaning = self.ladder.rung() != Rung::Keep;
@@ -121,31 +120,20 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     /// Shortfall that a dual vector proves on some ranges; the strongest is kept as the proof.
     fn try_on(&mut self, dual: &[f32; R], boxes: &Boxes<X>) -> f32 {
         let (mut column, mut magnitude) = ([0.0; X], [0.0; X]);
-        self.rows
-            .product(&self.plan, &self.network, dual, &mut column, &mut magnitude);
+        self.rows.product(&self.plan, &self.network, dual, &mut column, &mut magnitude);
         // Only what is in use: the rounding bound must not depend on the build's capacity.
         let (rows, cols) = (self.plan.rows(), self.plan.cols());
-        let product = Product {
-            column: head(&column, cols),
-            magnitude: head(&magnitude, cols),
-        };
+        let product = Product { column: head(&column, cols), magnitude: head(&magnitude, cols) };
         let limits = Rows {
             low: head(&self.judgement.row_low, rows),
             high: head(&self.judgement.row_high, rows),
             error: head(&self.judgement.error, rows),
         };
-        let ranges = Ranges {
-            low: head(&boxes.low, cols),
-            high: head(&boxes.high, cols),
-        };
+        let ranges = Ranges { low: head(&boxes.low, cols), high: head(&boxes.high, cols) };
         let proven = shortfall(head(dual, rows), product, limits, ranges);
         if proven > self.judgement.proof.shortfall {
             let boxes = boxes.clone();
-            self.judgement.proof = Proof {
-                dual: *dual,
-                boxes,
-                shortfall: proven,
-            };
+            self.judgement.proof = Proof { dual: *dual, boxes, shortfall: proven };
         }
         proven
     }
@@ -188,6 +176,23 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             steady &= abs(flow - end.trend()) < STEADY;
         }
         (middle, steady.then_some(theirs))
+    }
+
+    /// The same for the shadow, whose ties stand still: no price drives its duals.
+    pub(super) fn drop_stale_shadow(&mut self, boxes: &Boxes<X>) {
+        let mut dual = [0.0; R];
+        self.scaled.physical_dual(&self.shadow.y, &mut dual);
+        let kept = (self.judgement.error, self.judgement.proof.clone());
+        self.judgement.error = [0.0; R];
+        let plain = self.try_on(&dual, boxes);
+        (self.judgement.error, self.judgement.proof) = kept;
+        self.judgement.shadow_pause_ticks = self.judgement.shadow_pause_ticks.saturating_sub(1);
+        let settings = &self.plan.settings;
+        let large = max_abs(&self.shadow.y) > SHADOW_STALE_SHARE * settings.dual_clamp;
+        if large && plain < STALE_SLACK && self.judgement.shadow_pause_ticks == 0 {
+            self.judgement.shadow_pause_ticks = (STALE_PAUSE_S / settings.tick_s) as u16;
+            self.shadow.reset();
+        }
     }
 
     /// After a long impossible spell the duals may be far out; without open ties

@@ -46,11 +46,7 @@ struct Ramped {
 
 impl Ramped {
     const fn at(value: f32) -> Self {
-        Self {
-            now: value,
-            goal: value,
-            ticks_left: 0,
-        }
+        Self { now: value, goal: value, ticks_left: 0 }
     }
 
     fn go(&mut self, goal: f32, ticks: u32) {
@@ -166,8 +162,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         self.judgement = Judgement::new();
         self.ladder = Ladder::new();
         self.verdict = Verdict::Blind;
-        self.rows
-            .choose(&self.plan, &self.network, &self.tie_closed);
+        self.rows.choose(&self.plan, &self.network, &self.tie_closed);
         self.refresh_boxes();
         self.rebuild();
         self.ready = true;
@@ -250,8 +245,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             Message::TieTerms(terms) => {
                 let ties = self.plan.ties.iter().zip(&mut self.ends);
                 let mut ends = ties.filter(|(tie, _)| tie.number == terms.tie);
-                ends.next()
-                    .is_some_and(|(_, end)| end.hear(terms, &self.plan.settings))
+                ends.next().is_some_and(|(_, end)| end.hear(terms, &self.plan.settings))
             }
             Message::Hello(_)
             | Message::CharterPart(_)
@@ -273,9 +267,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         let moved = self.follow_statuses();
         self.pass_ramps();
         self.meet_neighbours();
-        let sight = self
-            .estimate
-            .update(&self.plan, &self.network, &self.measured, &self.active());
+        let sight = self.estimate.update(&self.plan, &self.network, &self.measured, &self.active());
         let clear = sight == Sight::Clear && self.estimate.is_started();
         self.refresh_boxes();
         if self.update_kinds() || moved {
@@ -284,12 +276,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         self.fill_problem();
         self.limits.fill(&self.scaled, &self.problem);
         let settings = self.plan.settings;
-        self.main.run(
-            &self.scaled,
-            &self.limits,
-            settings.dual_clamp,
-            settings.iterations,
-        );
+        let (sigma, clamp) = (self.scaled.sigma, settings.dual_clamp);
+        self.main.run(&self.scaled, &self.limits, sigma, clamp, settings.iterations);
         let violation = self.main.violation(&self.scaled, &self.limits);
         let wish = self.wishes();
         let still = self.write_units(&wish, sight);
@@ -298,13 +286,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         let witness = self.run_shadow();
         self.speak_verdict(clear, violation, still);
         let total = self.write_feeders(&wish, violation);
-        let found = Finding {
-            clear,
-            hard,
-            conditional,
-            witness,
-            shedding: total > 0.01,
-        };
+        let found = Finding { clear, hard, conditional, witness, shedding: total > 0.01 };
         let step = self.ladder.tick(found, &settings);
         self.speak(tick, step, say);
     }
@@ -312,11 +294,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     /// Readings that did not come get old.
     fn note_missing(&mut self, tick: u32) {
         let fresh = self.measured.any && self.measured.tick == tick;
-        self.missed_ticks = if fresh {
-            0
-        } else {
-            self.missed_ticks.saturating_add(1)
-        };
+        self.missed_ticks = if fresh { 0 } else { self.missed_ticks.saturating_add(1) };
         if self.missed_ticks > u16::from(AGE_MAX) {
             self.measured.age_out();
         }
@@ -327,12 +305,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         let strength = self.strength();
         let mut change = Change::None;
         for index in 0..self.plan.lines.len() {
-            let closed = self
-                .measured
-                .line_closed
-                .get(index)
-                .copied()
-                .unwrap_or(true);
+            let closed = self.measured.line_closed.get(index).copied().unwrap_or(true);
             if closed == self.network.is_closed(index) {
                 continue;
             }
@@ -342,11 +315,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             } else {
                 self.network.open(&self.plan, index, part, &strength)
             };
-            change = if change == Change::Relearn || now == Change::None {
-                change
-            } else {
-                now
-            };
+            change = if change == Change::Relearn || now == Change::None { change } else { now };
         }
         let ties_moved = self.tie_closed != self.measured.tie_closed;
         let units_moved = self.unit_on != self.measured.unit_in_service;
@@ -359,8 +328,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
                 self.estimate.freeze(self.plan.settings.freeze_ticks);
             }
         }
-        self.rows
-            .choose(&self.plan, &self.network, &self.tie_closed);
+        self.rows.choose(&self.plan, &self.network, &self.tie_closed);
         true
     }
 
@@ -386,11 +354,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     fn schedules(&self) -> [f32; TIES_MAX] {
         let mut out = [0.0; TIES_MAX];
         for (index, (value, schedule)) in out.iter_mut().zip(&self.schedule).enumerate() {
-            *value = if self.rows.is_attached(index) {
-                schedule.now
-            } else {
-                0.0
-            };
+            *value = if self.rows.is_attached(index) { schedule.now } else { 0.0 };
         }
         out
     }
@@ -441,10 +405,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         let mut boxes = Boxes::new();
         let view = self.view(&schedule);
         view.actuators(self.ladder.rung(), &mut boxes);
-        view.ties(
-            |index| self.open.get(index).copied().unwrap_or(false),
-            &mut boxes,
-        );
+        view.ties(|index| self.open.get(index).copied().unwrap_or(false), &mut boxes);
         self.boxes = boxes;
     }
 
@@ -464,12 +425,11 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         self.scaled.physical_dual(&self.main.y, &mut main);
         self.scaled.physical_dual(&self.shadow.y, &mut shadow);
         self.fill_costs();
-        self.rows
-            .fill(&self.plan, &self.network, self.scaled.matrix_mut());
+        self.rows.fill(&self.plan, &self.network, self.scaled.matrix_mut());
         let (cols, rows, eqs) = (self.plan.cols(), self.plan.rows(), self.plan.eqs());
         let kinds = self.kinds;
         let used = kinds.get(..cols).unwrap_or_default();
-        self.scaled.scale(&self.problem.curvature, used, rows, eqs);
+        self.scaled.scale(&self.problem.curvature, used, rows, eqs, self.plan.actuators());
         let mut scaled = [0.0; R];
         self.scaled.scaled_dual(&main, &mut scaled);
         clamp_dual(&mut scaled, self.plan.settings.dual_clamp);
@@ -509,13 +469,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         for (index, base) in self.base.iter().enumerate().take(self.plan.units.len()) {
             put(&mut self.problem.target, index, base.now);
         }
-        let prices = self
-            .plan
-            .ties
-            .iter()
-            .zip(&self.ends)
-            .zip(&self.open)
-            .enumerate();
+        let prices = self.plan.ties.iter().zip(&self.ends).zip(&self.open).enumerate();
         for (index, ((tie, end), &open)) in prices {
             let [flow, angle] = if open { end.price() } else { [0.0; 2] };
             let flow = if tie.from_end { flow } else { -flow };
@@ -551,11 +505,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
                 || !self.network.is_kept(unit.bus.into());
             let before = at(&self.setpoint, index);
             let value = if frozen { before } else { at(wish, index) };
-            let value = clip(
-                value,
-                min_zero(unit.emergency_low),
-                max(unit.emergency_high, 0.0),
-            );
+            let value = clip(value, min_zero(unit.emergency_low), max(unit.emergency_high, 0.0));
             still &= abs(value - before) < STILL;
             put(&mut self.setpoint, index, value);
         }
@@ -564,13 +514,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
 
     fn settle_ends(&mut self, wish: &[f32; X]) {
         let settings = self.plan.settings;
-        let ties = self
-            .plan
-            .ties
-            .iter()
-            .zip(&mut self.ends)
-            .zip(&self.open)
-            .enumerate();
+        let ties = self.plan.ties.iter().zip(&mut self.ends).zip(&self.open).enumerate();
         for (index, ((tie, end), &open)) in ties {
             let flow = at(wish, self.plan.actuators() + index);
             let angle = at(wish, self.plan.actuators() + self.plan.ties.len() + index);
@@ -582,11 +526,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     fn write_feeders(&mut self, wish: &[f32; X], violation: f32) -> f32 {
         let mut feeder_wish = [0.0; X];
         let wishes = wish.iter().skip(self.plan.units.len());
-        for (slot, value) in feeder_wish
-            .iter_mut()
-            .zip(wishes)
-            .take(self.plan.feeders.len())
-        {
+        for (slot, value) in feeder_wish.iter_mut().zip(wishes).take(self.plan.feeders.len()) {
             *slot = *value;
         }
         let now = FeederTick {
@@ -596,8 +536,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             settled: self.verdict == Verdict::Settled,
             ripe: self.ladder.is_ripe(&self.plan.settings),
         };
-        self.feeders
-            .update(&self.plan, &feeder_wish, &self.boxes, now);
+        self.feeders.update(&self.plan, &feeder_wish, &self.boxes, now);
         self.feeders.total(self.plan.feeders.len())
     }
 
@@ -605,17 +544,12 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     fn run_shadow(&mut self) -> bool {
         let schedule = self.schedules();
         let mut boxes = Boxes::new();
-        self.view(&schedule)
-            .shadow(self.ladder.rung(), &self.ends, &mut boxes);
+        self.view(&schedule).shadow(self.ladder.rung(), &self.ends, &mut boxes);
         self.problem.low = boxes.low;
         self.problem.high = boxes.high;
         let margin = self.plan.settings.climb_margin;
         let (eqs, rows) = (self.plan.eqs(), self.plan.rows());
-        let limits = self
-            .problem
-            .row_low
-            .iter_mut()
-            .zip(&mut self.problem.row_high);
+        let limits = self.problem.row_low.iter_mut().zip(&mut self.problem.row_high);
         for (low, high) in limits.take(rows).skip(eqs) {
             let by = margin * (*high - *low);
             *low += by;
@@ -623,12 +557,9 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         }
         self.limits.fill(&self.scaled, &self.problem);
         let settings = self.plan.settings;
-        self.shadow.run(
-            &self.scaled,
-            &self.limits,
-            settings.dual_clamp,
-            settings.shadow_iterations,
-        );
+        let (sigma, clamp) = (self.scaled.sigma_pinned, settings.dual_clamp);
+        self.drop_stale_shadow(&boxes);
+        self.shadow.run(&self.scaled, &self.limits, sigma, clamp, settings.shadow_iterations);
         let violation = self.shadow.violation(&self.scaled, &self.limits);
         self.ladder.rung() != Rung::Keep && violation < settings.climb_tolerance
     }

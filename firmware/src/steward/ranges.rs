@@ -29,10 +29,7 @@ pub struct Boxes<const X: usize> {
 impl<const X: usize> Boxes<X> {
     /// Everything closed.
     pub const fn new() -> Self {
-        Self {
-            low: [0.0; X],
-            high: [0.0; X],
-        }
+        Self { low: [0.0; X], high: [0.0; X] }
     }
 
     /// Set the range of one unknown.
@@ -79,12 +76,7 @@ pub struct View<'a, const B: usize, const X: usize, const R: usize> {
 impl<const B: usize, const X: usize, const R: usize> View<'_, B, X, R> {
     /// Whether the steward moves a unit.
     pub fn is_movable(&self, index: usize, unit: &Unit) -> bool {
-        let on = self
-            .measured
-            .unit_in_service
-            .get(index)
-            .copied()
-            .unwrap_or(false);
+        let on = self.measured.unit_in_service.get(index).copied().unwrap_or(false);
         unit.available && on && self.network.is_kept(unit.bus.into())
     }
 
@@ -120,11 +112,7 @@ impl<const B: usize, const X: usize, const R: usize> View<'_, B, X, R> {
         let low = max(-band, -tie.rating - schedule);
         let high = min(band, tie.rating - schedule);
         boxes.set(self.plan.tie_col(index), min(low, 0.0), max(high, 0.0));
-        let angle = if self.rows.has_angle(index) {
-            self.plan.settings.angle_band
-        } else {
-            0.0
-        };
+        let angle = if self.rows.has_angle(index) { self.plan.settings.angle_band } else { 0.0 };
         boxes.set(self.plan.angle_col(index), -angle, angle);
     }
 
@@ -160,11 +148,7 @@ impl<const B: usize, const X: usize, const R: usize> View<'_, B, X, R> {
 
     /// +1 where this area is at the line's `from` end, -1 at its `to` end.
     pub fn sign(&self, index: usize) -> f32 {
-        if self.plan.ties.get(index).is_some_and(|tie| tie.from_end) {
-            1.0
-        } else {
-            -1.0
-        }
+        if self.plan.ties.get(index).is_some_and(|tie| tie.from_end) { 1.0 } else { -1.0 }
     }
 
     /// Ranges for the shadow: the next tighter rung, shrunk by the climb margin.
@@ -204,8 +188,5 @@ impl<const B: usize, const X: usize, const R: usize> View<'_, B, X, R> {
 /// How far two ends of a tie are apart, and their mean, along the line.
 pub fn between(ours: [f32; 2], theirs: [f32; 2]) -> ([f32; 2], [f32; 2]) {
     let ([a, b], [c, d]) = (ours, theirs);
-    (
-        [0.5 * (a + c), 0.5 * (b + d)],
-        [0.5 * abs(a - c), 0.5 * abs(b - d)],
-    )
+    ([0.5 * (a + c), 0.5 * (b + d)], [0.5 * abs(a - c), 0.5 * abs(b - d)])
 }

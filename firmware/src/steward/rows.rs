@@ -43,12 +43,7 @@ struct TieShare {
 impl Rows {
     /// No ties.
     pub const fn new() -> Self {
-        Self {
-            attached: [false; TIES_MAX],
-            angles: Vec::new(),
-            reference: None,
-            angle_scale: 1.0,
-        }
+        Self { attached: [false; TIES_MAX], angles: Vec::new(), reference: None, angle_scale: 1.0 }
     }
 
     /// Choose the rows for the present topology.
@@ -114,10 +109,7 @@ impl Rows {
             .checked_sub(plan.eqs())
             .and_then(|index| plan.lines.get(index).map(|line| (index, line)))
         {
-            let ends = (
-                columns.get(usize::from(line.from)),
-                columns.get(usize::from(line.to)),
-            );
+            let ends = (columns.get(usize::from(line.from)), columns.get(usize::from(line.to)));
             if let (true, (Some(a), Some(b))) = (network.is_live(index, line), ends) {
                 for (value, (x, y)) in out.iter_mut().zip(a.iter().zip(b)) {
                     *value = line.susceptance * (x - y);
@@ -146,25 +138,16 @@ impl Rows {
         row: usize,
         tie: usize,
     ) -> TieShare {
-        let none = TieShare {
-            deviation: 0.0,
-            angle: 0.0,
-        };
+        let none = TieShare { deviation: 0.0, angle: 0.0 };
         let Some(angle_tie) = row.checked_sub(1).and_then(|index| self.angles.get(index)) else {
             return none;
         };
         let reactance = plan.ties.get(tie).map_or(0.0, |tie| tie.reactance);
         let full = self.angle_scale * reactance;
         if *angle_tie == tie {
-            TieShare {
-                deviation: -0.5 * full,
-                angle: -full,
-            }
+            TieShare { deviation: -0.5 * full, angle: -full }
         } else if self.reference == Some(tie) {
-            TieShare {
-                deviation: 0.5 * full,
-                angle: full,
-            }
+            TieShare { deviation: 0.5 * full, angle: full }
         } else {
             none
         }
@@ -226,10 +209,9 @@ impl Rows {
             }
             for index in 0..plan.ties.len() {
                 let share = self.own_share(plan, row, index);
-                for (col, part) in [
-                    (plan.tie_col(index), share.deviation),
-                    (plan.angle_col(index), share.angle),
-                ] {
+                for (col, part) in
+                    [(plan.tie_col(index), share.deviation), (plan.angle_col(index), share.angle)]
+                {
                     let term = y * part;
                     let (total, total_size) =
                         (at(&own, col) + term, at(&own_size, col) + abs(term));
@@ -244,11 +226,8 @@ impl Rows {
             put(magnitude, actuator, at(&size, bus));
         }
         for (index, tie) in plan.ties.iter().enumerate() {
-            let (col, angle, bus) = (
-                plan.tie_col(index),
-                plan.angle_col(index),
-                usize::from(tie.bus),
-            );
+            let (col, angle, bus) =
+                (plan.tie_col(index), plan.angle_col(index), usize::from(tie.bus));
             let on = if self.is_attached(index) { 1.0 } else { 0.0 };
             put(column, col, on * (at(&own, col) - at(&sum, bus)));
             put(magnitude, col, on * (at(&own_size, col) + at(&size, bus)));
@@ -325,14 +304,9 @@ impl Rows {
         out: &mut [f32; R],
     ) {
         put(out, 0, estimate.load_error);
-        let reference = self
-            .reference
-            .map_or(0.0, |tie| at(&estimate.angle_error, tie));
+        let reference = self.reference.map_or(0.0, |tie| at(&estimate.angle_error, tie));
         for row in 1..plan.eqs() {
-            let own = self
-                .angles
-                .get(row - 1)
-                .map_or(0.0, |&tie| at(&estimate.angle_error, tie));
+            let own = self.angles.get(row - 1).map_or(0.0, |&tie| at(&estimate.angle_error, tie));
             put(out, row, self.angle_scale * (own + reference));
         }
         for (slot, &error) in out.iter_mut().skip(plan.eqs()).zip(&estimate.flow_error) {

@@ -38,12 +38,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             pack_bits((0..units).map(|_| false), &mut bits),
         );
         if let (Some(setpoint_mw), Some(shed_mw), Some(take_off)) = packed {
-            say(Say::Plant(Message::Orders(Orders {
-                tick,
-                setpoint_mw,
-                shed_mw,
-                take_off,
-            })));
+            say(Say::Plant(Message::Orders(Orders { tick, setpoint_mw, shed_mw, take_off })));
         }
     }
 
@@ -159,8 +154,6 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
 
     /// Deviation of a tie along the line, pu.
     pub fn tie_deviation(&self, tie: usize) -> f32 {
-        self.ends
-            .get(tie)
-            .map_or(0.0, |end| at(&end.deviation(), 0))
+        self.ends.get(tie).map_or(0.0, |end| at(&end.deviation(), 0))
     }
 }

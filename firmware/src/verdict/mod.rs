@@ -84,9 +84,5 @@ pub fn shortfall(y: &[f32], product: Product<'_>, rows: Rows<'_>, ranges: Ranges
     let terms = (y.len() + product.column.len() + 4) as f32;
     let bound = (gap - terms * ROUNDING * magnitude) / norm;
     // A zero or unusable y proves nothing.
-    if norm > 0.0 && bound.is_finite() {
-        bound
-    } else {
-        -1.0
-    }
+    if norm > 0.0 && bound.is_finite() { bound } else { -1.0 }
 }

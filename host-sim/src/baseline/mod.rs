@@ -37,11 +37,7 @@ pub struct Settings {
 
 impl Default for Settings {
     fn default() -> Self {
-        Self {
-            cycle_s: 4.0,
-            gain_per_s: 0.05,
-            participation: Participation::Droop,
-        }
+        Self { cycle_s: 4.0, gain_per_s: 0.05, participation: Participation::Droop }
     }
 }
 
@@ -182,10 +178,7 @@ impl AreaControlError {
                 (wanted_mw, within_mw, within_mw - base_mw)
             };
             let parts: Vec<_> = free.iter().map(|&unit| part(unit)).collect();
-            let excess_mw: f64 = parts
-                .iter()
-                .map(|(wanted, within, _)| wanted - within)
-                .sum();
+            let excess_mw: f64 = parts.iter().map(|(wanted, within, _)| wanted - within).sum();
             // Only units limited in the direction of the common excess are final
             // (those limited the other way may come free again).
             let is_final = |&(wanted, within, _): &(f64, f64, f64)| {
@@ -218,11 +211,7 @@ fn weight(settings: &Settings, unit: usize, data: &Unit) -> f64 {
         Participation::Ramp => data.ramp_mw_per_s.min(data.rating_mva / settings.cycle_s),
         Participation::Given(weights) => weights.get(unit).copied().unwrap_or(0.0),
     };
-    if weight.is_finite() {
-        weight.max(0.0)
-    } else {
-        0.0
-    }
+    if weight.is_finite() { weight.max(0.0) } else { 0.0 }
 }
 
 /// 1/R of a unit in MW per Hz; 0 without governor.

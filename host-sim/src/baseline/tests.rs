@@ -105,10 +105,7 @@ fn participation_by_ramp_caps_a_battery_at_its_nameplate_per_cycle() {
     let mut grid = pair();
     grid.units[0].ramp_mw_per_s = f64::INFINITY;
     grid.units[1].ramp_mw_per_s = 5.0;
-    let settings = Settings {
-        participation: Participation::Ramp,
-        ..Settings::default()
-    };
+    let settings = Settings { participation: Participation::Ramp, ..Settings::default() };
     let mut scheme = AreaControlError::new(&grid, &settings);
     let setpoint_mw = cycle_with(&mut scheme, -60.0, [0.0, 0.0], &ALL);
     // 100 MVA in 4 s is 25 MW/s against 5: 10 and 2 of 12 MW.
@@ -184,27 +181,16 @@ fn follows_the_sampled_reference_run_on_39_buses() {
             }
         }
         if let Some(request) = REQUESTS.iter().find(|request| request.0 == second) {
-            assert!(
-                (scheme.request_mw()[0] - request.1).abs() < 2e-6,
-                "{second} s"
-            );
-            assert!(
-                (scheme.request_mw()[1] - request.2).abs() < 2e-6,
-                "{second} s"
-            );
+            assert!((scheme.request_mw()[0] - request.1).abs() < 2e-6, "{second} s");
+            assert!((scheme.request_mw()[1] - request.2).abs() < 2e-6, "{second} s");
             requests_seen += 1;
         }
         if second == 1 {
-            plant
-                .apply(&Happening::LoadStep { bus: 19, mw: 100.0 })
-                .unwrap();
+            plant.apply(&Happening::LoadStep { bus: 19, mw: 100.0 }).unwrap();
         }
         for _ in 0..100 {
             plant.step();
         }
     }
-    assert_eq!(
-        (requests_seen, samples_seen),
-        (REQUESTS.len(), SAMPLES.len())
-    );
+    assert_eq!((requests_seen, samples_seen), (REQUESTS.len(), SAMPLES.len()));
 }

@@ -16,22 +16,12 @@ pub(crate) struct Bounds {
 impl Bounds {
     /// From `least` to `most`, both included.
     pub const fn within(least: f64, most: f64) -> Self {
-        Self {
-            least,
-            most,
-            above: false,
-            endless: false,
-        }
+        Self { least, most, above: false, endless: false }
     }
 
     /// Above `least`, up to `most`.
     pub const fn above(least: f64, most: f64) -> Self {
-        Self {
-            least,
-            most,
-            above: true,
-            endless: false,
-        }
+        Self { least, most, above: true, endless: false }
     }
 
     /// The same, or `inf`.
@@ -42,11 +32,7 @@ impl Bounds {
 
     /// Whether a value is one of them; `nan` never is.
     pub fn hold(self, value: f64) -> bool {
-        let low = if self.above {
-            value > self.least
-        } else {
-            value >= self.least
-        };
+        let low = if self.above { value > self.least } else { value >= self.least };
         (low && value <= self.most) || (self.endless && value == f64::INFINITY)
     }
 }

@@ -16,30 +16,12 @@ const TITLES: &[(&str, &str)] = &[
         "quillon",
         "Two disturbances kept inside their areas, one that needs the neighbours, and the way back",
     ),
-    (
-        "absorb",
-        "A line trip and a load step that their areas absorb alone",
-    ),
-    (
-        "lean",
-        "A hydro unit is lost; Ashmere leans on its neighbours",
-    ),
-    (
-        "stretch",
-        "Two ties and a unit are lost; Ashmere spends its reserve and emergency range",
-    ),
-    (
-        "shed",
-        "Load is shed in Ashmere when no help can reach it, and comes back when it can",
-    ),
-    (
-        "switched",
-        "A pocket behind one full line, and a feeder that is either on or off",
-    ),
-    (
-        "rough-link",
-        "A wind park is lost while the links between the stewards are bad",
-    ),
+    ("absorb", "A line trip and a load step that their areas absorb alone"),
+    ("lean", "A hydro unit is lost; Ashmere leans on its neighbours"),
+    ("stretch", "Two ties and a unit are lost; Ashmere spends its reserve and emergency range"),
+    ("shed", "Load is shed in Ashmere when no help can reach it, and comes back when it can"),
+    ("switched", "A pocket behind one full line, and a feeder that is either on or off"),
+    ("rough-link", "A wind park is lost while the links between the stewards are bad"),
     (
         "silent-neighbour",
         "A neighbour's board dies while it is helping; the other neighbour is enough",
@@ -110,10 +92,7 @@ mod tests {
         let count = |area| grid.buses.iter().filter(|bus| bus.area == area).count();
         assert_eq!([count(0), count(1), count(2)], [12, 10, 8]);
         let area_of = |bus: usize| grid.buses[bus].area;
-        let ties = grid
-            .lines
-            .iter()
-            .filter(|line| area_of(line.from) != area_of(line.to));
+        let ties = grid.lines.iter().filter(|line| area_of(line.from) != area_of(line.to));
         assert_eq!(ties.count(), 5);
         let load_mw: f64 = grid.buses.iter().map(|bus| bus.load_mw).sum();
         assert_eq!(load_mw, 1400.0);

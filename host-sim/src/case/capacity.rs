@@ -21,35 +21,21 @@ pub fn fits_largest_steward(grid: &Grid) -> Result<(), Vec<String>> {
         let inside = |bus: usize| grid.buses[bus].area == index;
         let ends = |line: &&super::model::Line| (inside(line.from), inside(line.to));
         let counts = [
-            (
-                "buses",
-                grid.buses.iter().filter(|bus| bus.area == index).count(),
-                BUSES_MAX,
-            ),
+            ("buses", grid.buses.iter().filter(|bus| bus.area == index).count(), BUSES_MAX),
             (
                 "lines",
-                grid.lines
-                    .iter()
-                    .filter(|line| ends(line) == (true, true))
-                    .count(),
+                grid.lines.iter().filter(|line| ends(line) == (true, true)).count(),
                 LINES_MAX,
             ),
             (
                 "units and feeders",
                 grid.units.iter().filter(|unit| inside(unit.bus)).count()
-                    + grid
-                        .feeders
-                        .iter()
-                        .filter(|feeder| inside(feeder.bus))
-                        .count(),
+                    + grid.feeders.iter().filter(|feeder| inside(feeder.bus)).count(),
                 ACTUATORS_MAX,
             ),
             (
                 "ties",
-                grid.lines
-                    .iter()
-                    .filter(|line| ends(line).0 != ends(line).1)
-                    .count(),
+                grid.lines.iter().filter(|line| ends(line).0 != ends(line).1).count(),
                 TIES_MAX,
             ),
         ];
@@ -62,9 +48,5 @@ pub fn fits_largest_steward(grid: &Grid) -> Result<(), Vec<String>> {
             }
         }
     }
-    if sentences.is_empty() {
-        Ok(())
-    } else {
-        Err(sentences)
-    }
+    if sentences.is_empty() { Ok(()) } else { Err(sentences) }
 }

@@ -32,17 +32,8 @@ impl<'a, 'i> Fields<'a, 'i> {
         noun: &'static str,
         log: &'a mut Vec<Problem>,
     ) -> Self {
-        let marks = Marks {
-            heading,
-            ..Marks::default()
-        };
-        Self {
-            table,
-            noun,
-            asked: Vec::new(),
-            marks,
-            log,
-        }
+        let marks = Marks { heading, ..Marks::default() };
+        Self { table, noun, asked: Vec::new(), marks, log }
     }
 
     /// Report the keys nobody asked for and hand over the places.
@@ -122,9 +113,7 @@ impl<'a, 'i> Fields<'a, 'i> {
 
     /// A number that must be there; a placeholder of 1 stands in for a wrong one.
     pub fn need_number(&mut self, key: &'static str, bounds: Bounds) -> f64 {
-        self.needed(key)
-            .and_then(|value| self.checked(key, value, bounds))
-            .unwrap_or(1.0)
+        self.needed(key).and_then(|value| self.checked(key, value, bounds)).unwrap_or(1.0)
     }
 
     /// A number that may be there.
@@ -247,10 +236,7 @@ impl<'a, 'i> Fields<'a, 'i> {
     }
 
     fn pick<T: Copy>(&mut self, key: &str, text: &str, words: &[(&str, T)]) -> Option<T> {
-        let found = words
-            .iter()
-            .find(|(word, _)| *word == text)
-            .map(|&(_, value)| value);
+        let found = words.iter().find(|(word, _)| *word == text).map(|&(_, value)| value);
         if found.is_none() {
             let known: Vec<&str> = words.iter().map(|&(word, _)| word).collect();
             let problem = Problem::new(self.place(key), format!("`{key}` cannot be `{text}`"))
@@ -335,9 +321,9 @@ fn to_number(value: &DeValue<'_>) -> Option<f64> {
     match value {
         DeValue::Float(digits) => digits.as_str().parse().ok(),
         DeValue::Integer(digits) if digits.radix() == 10 => digits.as_str().parse().ok(),
-        DeValue::Integer(digits) => i64::from_str_radix(digits.as_str(), digits.radix())
-            .ok()
-            .map(|whole| whole as f64),
+        DeValue::Integer(digits) => {
+            i64::from_str_radix(digits.as_str(), digits.radix()).ok().map(|whole| whole as f64)
+        }
         _ => None,
     }
 }

@@ -86,20 +86,14 @@ fn read_tables(root: &DeTable<'_>, log: &mut Vec<Problem>) -> (Grid, GridMarks) 
     }
     let buses = Names::of(grid.buses.iter().map(|bus| bus.name.as_str()));
     for (table, heading) in read_list(root, "line", log) {
-        let (line, place) = read_line(
-            Fields::new(table, heading, "a line", log),
-            &buses,
-            &grid.buses,
-        );
+        let (line, place) =
+            read_line(Fields::new(table, heading, "a line", log), &buses, &grid.buses);
         grid.lines.push(line);
         marks.lines.push(place);
     }
     for (table, heading) in read_list(root, "unit", log) {
-        let (unit, place) = read_unit(
-            Fields::new(table, heading, "a unit", log),
-            &buses,
-            grid.base_mva,
-        );
+        let (unit, place) =
+            read_unit(Fields::new(table, heading, "a unit", log), &buses, grid.base_mva);
         grid.units.push(unit);
         marks.units.push(place);
     }
@@ -133,24 +127,15 @@ fn read_head(root: &DeTable<'_>, log: &mut Vec<Problem>) -> (Grid, Marks) {
     };
     let mut fields = Fields::new(table, heading, "the grid", log);
     grid.name = fields.need_name();
-    grid.base_mva = fields.number(
-        "base_mva",
-        defaults::BASE_MVA,
-        Bounds::within(0.001, 10_000.0),
-    );
-    grid.nominal_hz = fields.number(
-        "nominal_hz",
-        defaults::NOMINAL_HZ,
-        Bounds::within(15.0, 450.0),
-    );
+    grid.base_mva = fields.number("base_mva", defaults::BASE_MVA, Bounds::within(0.001, 10_000.0));
+    grid.nominal_hz =
+        fields.number("nominal_hz", defaults::NOMINAL_HZ, Bounds::within(15.0, 450.0));
     (grid, fields.finish())
 }
 
 fn read_area(mut fields: Fields<'_, '_>) -> (Area, Marks) {
-    let area = Area {
-        name: fields.need_name(),
-        lowest_rung: fields.choice("lowest_rung", &RUNGS, 3),
-    };
+    let area =
+        Area { name: fields.need_name(), lowest_rung: fields.choice("lowest_rung", &RUNGS, 3) };
     (area, fields.finish())
 }
 
@@ -198,33 +183,21 @@ const KINDS: [(&str, UnitKind); 6] = [
     ("battery", UnitKind::Battery),
 ];
 
-const STATUSES: [(&str, UnitStatus); 3] = [
-    ("available", UnitStatus::Available),
-    ("fixed", UnitStatus::Fixed),
-    ("off", UnitStatus::Off),
-];
+const STATUSES: [(&str, UnitStatus); 3] =
+    [("available", UnitStatus::Available), ("fixed", UnitStatus::Fixed), ("off", UnitStatus::Off)];
 
-const SILENCES: [(&str, OnSilence); 3] = [
-    ("last", OnSilence::Last),
-    ("schedule", OnSilence::Schedule),
-    ("zero", OnSilence::Zero),
-];
+const SILENCES: [(&str, OnSilence); 3] =
+    [("last", OnSilence::Last), ("schedule", OnSilence::Schedule), ("zero", OnSilence::Zero)];
 
 fn read_unit(mut fields: Fields<'_, '_>, buses: &Names, base_mva: f64) -> (Unit, Marks) {
     let name = fields.need_name();
     let bus = fields.need_reference("bus", "bus", buses);
-    let kind = fields
-        .need_choice("kind", &KINDS)
-        .unwrap_or(UnitKind::Steam);
+    let kind = fields.need_choice("kind", &KINDS).unwrap_or(UnitKind::Steam);
     let status = fields.choice("status", &STATUSES, UnitStatus::Available);
     let usual = defaults::of_kind(kind);
     let max_mw = fields.need_number("max_mw", ANY_MW);
     // A battery takes in what it can give; others stop at standstill.
-    let lowest_mw = if kind == UnitKind::Battery {
-        -max_mw
-    } else {
-        0.0
-    };
+    let lowest_mw = if kind == UnitKind::Battery { -max_mw } else { 0.0 };
     let min_mw = fields.number("min_mw", lowest_mw, ANY_MW);
     let base_mw = match status {
         UnitStatus::Off => fields.number("base_mw", 0.0, ANY_MW),
@@ -278,14 +251,8 @@ fn read_droop(fields: &mut Fields<'_, '_>, usual: Option<f64>) -> Option<f64> {
 }
 
 fn read_feeder(mut fields: Fields<'_, '_>, buses: &Names) -> (Feeder, Marks) {
-    let kinds = [
-        ("continuous", FeederKind::Continuous),
-        ("switched", FeederKind::Switched),
-    ];
-    let restores = [
-        ("operator", Restore::Operator),
-        ("automatic", Restore::Automatic),
-    ];
+    let kinds = [("continuous", FeederKind::Continuous), ("switched", FeederKind::Switched)];
+    let restores = [("operator", Restore::Operator), ("automatic", Restore::Automatic)];
     let price = Bounds::within(0.1, 1_000_000.0);
     let feeder = Feeder {
         name: fields.need_name(),

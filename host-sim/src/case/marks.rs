@@ -20,10 +20,7 @@ pub(crate) struct Marks {
 impl Marks {
     /// Marks of an entry that is not there: broken, so that nothing is checked against it.
     pub fn of_nothing() -> Self {
-        Self {
-            broken: true,
-            ..Self::default()
-        }
+        Self { broken: true, ..Self::default() }
     }
 
     /// Place of a key's value, or of the heading where the key is absent.

@@ -48,10 +48,7 @@ pub fn read_grid(path: &Path) -> Result<Grid, Problems> {
 fn read_text(path: &Path) -> Result<String, Problems> {
     let file = path.display().to_string();
     let bytes = std::fs::read(path).map_err(|err| {
-        Problems::without_text(
-            &file,
-            Problem::new(0..0, format!("cannot read {file}: {err}")),
-        )
+        Problems::without_text(&file, Problem::new(0..0, format!("cannot read {file}: {err}")))
     })?;
     String::from_utf8(bytes).map_err(|err| {
         let at = err.utf8_error().valid_up_to();

@@ -41,11 +41,7 @@ pub(crate) fn nearest<'a>(
         .map(|(_, word)| word);
     let holding = || {
         let holds = |word: &&&str| length(found) >= PART_MIN && word.contains(found);
-        words
-            .iter()
-            .filter(holds)
-            .copied()
-            .min_by_key(|word| length(word))
+        words.iter().filter(holds).copied().min_by_key(|word| length(word))
     };
     close.or_else(holding)
 }
@@ -80,10 +76,7 @@ mod tests {
         let keys = ["reactance_pu", "rating_mw"];
         assert_eq!(nearest("reactance", keys), Some("reactance_pu"));
         assert_eq!(nearest("zzz", keys), None);
-        assert_eq!(
-            nearest("damping", ["load_damping", "damping_mw_per_hz"]),
-            Some("load_damping")
-        );
+        assert_eq!(nearest("damping", ["load_damping", "damping_mw_per_hz"]), Some("load_damping"));
         assert!(suggestion("zzz", "key", &keys).contains("`rating_mw`"));
     }
 }

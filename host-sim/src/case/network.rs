@@ -57,9 +57,7 @@ pub(crate) fn check_network(grid: &Grid, marks: &GridMarks, log: &mut Vec<Proble
             marks.buses[second[0]].of("name"),
             format!("the network falls into {} pieces", whole.len()),
         )
-        .found(format!(
-            "no line in service leads from `{other}` to `{one}`"
-        ))
+        .found(format!("no line in service leads from `{other}` to `{one}`"))
         .see(marks.buses[first[0]].of("name"), "the other side")
         .right("join them with a `[[line]]`, or close one");
         log.push(problem);
@@ -83,15 +81,8 @@ pub(crate) fn check_network(grid: &Grid, marks: &GridMarks, log: &mut Vec<Proble
 /// A piece in a few words.
 fn describe(grid: &Grid, piece: &[usize]) -> String {
     const SHOWN: usize = 4;
-    let names: Vec<&str> = piece
-        .iter()
-        .take(SHOWN)
-        .map(|&bus| grid.buses[bus].name.as_str())
-        .collect();
+    let names: Vec<&str> =
+        piece.iter().take(SHOWN).map(|&bus| grid.buses[bus].name.as_str()).collect();
     let more = piece.len().saturating_sub(SHOWN);
-    if more > 0 {
-        format!("{} and {more} more", names.join(", "))
-    } else {
-        names.join(", ")
-    }
+    if more > 0 { format!("{} and {more} more", names.join(", ")) } else { names.join(", ") }
 }

@@ -82,24 +82,14 @@ fn read(text: &str, file_name: &str, grid: &Grid, log: &mut Vec<Problem>) -> Opt
     timeline::check(grid, &run, &run_marks, &events, log);
     let mut events: Vec<Event> = events.into_iter().map(|(event, _)| event).collect();
     events.sort_by(|a, b| a.at_s.total_cmp(&b.at_s));
-    Some(Play {
-        name: name_of(file_name),
-        title,
-        run,
-        steward,
-        links,
-        events,
-    })
+    Some(Play { name: name_of(file_name), title, run, steward, links, events })
 }
 
 /// `dir/storm.play.toml` is called `storm`.
 fn name_of(file_name: &str) -> String {
-    let stem = Path::new(file_name)
-        .file_name()
-        .map_or(file_name.into(), |name| name.to_string_lossy());
-    stem.trim_end_matches(".toml")
-        .trim_end_matches(".play")
-        .to_owned()
+    let stem =
+        Path::new(file_name).file_name().map_or(file_name.into(), |name| name.to_string_lossy());
+    stem.trim_end_matches(".toml").trim_end_matches(".play").to_owned()
 }
 
 /// The keys above the first table.
@@ -139,11 +129,7 @@ fn read_run(root: &DeTable<'_>, log: &mut Vec<Problem>) -> (Run, Marks) {
     let mut fields = Fields::new(table, heading, "[run]", log);
     run.duration_s = fields.need_number("duration_s", Bounds::within(1.0, DURATION_S_MAX));
     run.tick_s = fields.number("tick_s", run.tick_s, Bounds::within(0.02, 4.0));
-    run.plant_step_s = fields.number(
-        "plant_step_s",
-        run.plant_step_s,
-        Bounds::within(0.0005, 0.1),
-    );
+    run.plant_step_s = fields.number("plant_step_s", run.plant_step_s, Bounds::within(0.0005, 0.1));
     run.seed = fields.whole("seed", run.seed, 0, i64::MAX as u64);
     (run, fields.finish())
 }

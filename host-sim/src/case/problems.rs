@@ -27,13 +27,7 @@ pub struct Problem {
 impl Problem {
     /// A problem at a place.
     pub fn new(span: Range<usize>, title: impl Into<String>) -> Self {
-        Self {
-            span,
-            title: title.into(),
-            found: String::new(),
-            right: String::new(),
-            see: None,
-        }
+        Self { span, title: title.into(), found: String::new(), right: String::new(), see: None }
     }
 
     /// Say what was found.
@@ -71,11 +65,7 @@ impl Problems {
     /// Problems of a text, in the order of their places.
     pub fn of_text(file: &str, text: &str, mut list: Vec<Problem>) -> Self {
         list.sort_by_key(|problem| problem.span.start);
-        Self {
-            file: file.to_owned(),
-            text: text.to_owned(),
-            list,
-        }
+        Self { file: file.to_owned(), text: text.to_owned(), list }
     }
 
     /// A problem with a file whose text is not at hand.
@@ -96,20 +86,13 @@ impl Problems {
     /// Line of a problem's place, counted from 1.
     pub fn line_of(&self, problem: &Problem) -> usize {
         let end = problem.span.start.min(self.text.len());
-        1 + self.text.as_bytes()[..end]
-            .iter()
-            .filter(|&&byte| byte == b'\n')
-            .count()
+        1 + self.text.as_bytes()[..end].iter().filter(|&&byte| byte == b'\n').count()
     }
 
     /// All problems as text for a terminal.
     pub fn render(&self, colour: bool) -> String {
-        let renderer = if colour {
-            Renderer::styled()
-        } else {
-            Renderer::plain()
-        }
-        .decor_style(DecorStyle::Ascii);
+        let renderer = if colour { Renderer::styled() } else { Renderer::plain() }
+            .decor_style(DecorStyle::Ascii);
         let mut out = String::new();
         for problem in &self.list {
             out.push_str(&renderer.render(&[self.group(problem)]));
@@ -135,9 +118,8 @@ impl Problems {
             if !problem.found.is_empty() {
                 primary = primary.label(problem.found.as_str());
             }
-            let mut snippet = Snippet::source(self.text.as_str())
-                .path(self.file.as_str())
-                .annotation(primary);
+            let mut snippet =
+                Snippet::source(self.text.as_str()).path(self.file.as_str()).annotation(primary);
             if let Some((span, label)) = &problem.see {
                 let context = AnnotationKind::Context.span(self.inside(span));
                 snippet = snippet.annotation(context.label(label.as_str()));

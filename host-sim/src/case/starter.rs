@@ -4,14 +4,8 @@
 
 /// Name and text of each starter file; the play refers to the grid by its name.
 pub const FILES: [(&str, &str); 2] = [
-    (
-        "starter.grid.toml",
-        include_str!("starter/starter.grid.toml"),
-    ),
-    (
-        "starter.play.toml",
-        include_str!("starter/starter.play.toml"),
-    ),
+    ("starter.grid.toml", include_str!("starter/starter.grid.toml")),
+    ("starter.play.toml", include_str!("starter/starter.play.toml")),
 ];
 
 #[cfg(test)]
@@ -24,10 +18,7 @@ mod tests {
         let [(grid_name, grid_text), (play_name, play_text)] = FILES;
         let grid = parse_grid(grid_text, grid_name).expect("the starter grid is right");
         let play = parse_play(play_text, play_name, &grid).expect("the starter play is right");
-        assert_eq!(
-            (grid.areas.len(), play.events.len(), play.name.as_str()),
-            (2, 2, "starter")
-        );
+        assert_eq!((grid.areas.len(), play.events.len(), play.name.as_str()), (2, 2, "starter"));
         assert!(play_text.contains(grid_name));
     }
 

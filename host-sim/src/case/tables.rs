@@ -49,11 +49,8 @@ fn check_format(root: &DeTable<'_>, text: &str, log: &mut Vec<Problem>) {
         return;
     };
     let first = root.iter().map(|(key, _)| key.span().start).min();
-    let key_at = root
-        .keys()
-        .find(|key| key.get_ref() == "format")
-        .map(Spanned::span)
-        .unwrap_or_default();
+    let key_at =
+        root.keys().find(|key| key.get_ref() == "format").map(Spanned::span).unwrap_or_default();
     match value.get_ref() {
         DeValue::Integer(digits) if digits.as_str() == "1" => {
             if first != Some(key_at.start) {
@@ -62,18 +59,12 @@ fn check_format(root: &DeTable<'_>, text: &str, log: &mut Vec<Problem>) {
         }
         DeValue::Integer(digits) => {
             let found = format!("this file is of format {digits}");
-            log.push(
-                Problem::new(value.span(), "unknown format")
-                    .found(found)
-                    .right(RIGHT),
-            );
+            log.push(Problem::new(value.span(), "unknown format").found(found).right(RIGHT));
         }
         other => {
             let found = format!("this is {}", type_name(other));
             log.push(
-                Problem::new(value.span(), "`format` must be a number")
-                    .found(found)
-                    .right(RIGHT),
+                Problem::new(value.span(), "`format` must be a number").found(found).right(RIGHT),
             );
         }
     }

@@ -56,16 +56,9 @@ fn check_steps(run: &Run, marks: &Marks, log: &mut Vec<Problem>) {
     let steps = run.tick_s / run.plant_step_s;
     // Decimal fractions are not exact in binary; a part in a million is the reader's rounding.
     if (steps - steps.round()).abs() > 1e-6 * steps || steps.round() < 1.0 {
-        let at = if marks.has("plant_step_s") {
-            "plant_step_s"
-        } else {
-            "tick_s"
-        };
+        let at = if marks.has("plant_step_s") { "plant_step_s" } else { "tick_s" };
         let problem = Problem::new(marks.of(at), "a tick must be a whole number of plant steps")
-            .found(format!(
-                "{} s / {} s = {steps:.4}",
-                run.tick_s, run.plant_step_s
-            ))
+            .found(format!("{} s / {} s = {steps:.4}", run.tick_s, run.plant_step_s))
             .right("for example `tick_s = 0.1` and `plant_step_s = 0.01`");
         log.push(problem);
     }
@@ -80,21 +73,11 @@ fn check_time(event: &Event, place: &Marks, run: &Run, run_marks: &Marks, log: &
         Happening::LinkOutage { for_s, .. } => ("for_s", event.at_s + for_s),
         _ => ("at_s", event.at_s),
     };
-    let key = if event.at_s >= run.duration_s {
-        "at_s"
-    } else {
-        key
-    };
+    let key = if event.at_s >= run.duration_s { "at_s" } else { key };
     if event.at_s >= run.duration_s || end_s > run.duration_s {
         let problem = Problem::new(place.of(key), "outside the run")
-            .found(format!(
-                "this is {} s after the start",
-                end_s.max(event.at_s)
-            ))
-            .see(
-                run_marks.of("duration_s"),
-                format!("the run ends at {} s", run.duration_s),
-            );
+            .found(format!("this is {} s after the start", end_s.max(event.at_s)))
+            .see(run_marks.of("duration_s"), format!("the run ends at {} s", run.duration_s));
         log.push(problem);
     }
 }
@@ -126,12 +109,9 @@ impl Now<'_> {
         let word = if close { "closed" } else { "open" };
         (was_closed == close).then(|| {
             let name = &self.grid.lines[line].name;
-            Problem::new(
-                place.of("line"),
-                format!("line `{name}` is already {word} then"),
-            )
-            .found("nothing would happen")
-            .right("look at `closed` in the grid and at the events before this one")
+            Problem::new(place.of("line"), format!("line `{name}` is already {word} then"))
+                .found("nothing would happen")
+                .right("look at `closed` in the grid and at the events before this one")
         })
     }
 
@@ -142,31 +122,22 @@ impl Now<'_> {
         let feeders_mw: f64 = feeders.map(|feeder| feeder.load_mw).sum();
         (load_mw < feeders_mw - ROUNDING_MW).then(|| {
             let name = &self.grid.buses[bus].name;
-            Problem::new(
-                place.of("mw"),
-                format!("bus `{name}` would have {load_mw} MW left"),
-            )
-            .found("a smaller load than its feeders carry")
-            .right(format!("its load must stay at {feeders_mw} MW or above"))
+            Problem::new(place.of("mw"), format!("bus `{name}` would have {load_mw} MW left"))
+                .found("a smaller load than its feeders carry")
+                .right(format!("its load must stay at {feeders_mw} MW or above"))
         })
     }
 
     fn move_unit(&mut self, unit: usize, trip: bool, place: &Marks) -> Option<Problem> {
         let name = &self.grid.units[unit].name;
         if self.grid.units[unit].status == UnitStatus::Off {
-            let problem = Problem::new(
-                place.of("unit"),
-                format!("unit `{name}` is off all the time"),
-            )
-            .right("its `status` in the grid would have to be `available` or `fixed`");
+            let problem =
+                Problem::new(place.of("unit"), format!("unit `{name}` is off all the time"))
+                    .right("its `status` in the grid would have to be `available` or `fixed`");
             return Some(problem);
         }
         let was_tripped = std::mem::replace(&mut self.tripped[unit], trip);
-        let word = if trip {
-            "has already tripped"
-        } else {
-            "is in service"
-        };
+        let word = if trip { "has already tripped" } else { "is in service" };
         (was_tripped == trip).then(|| {
             Problem::new(place.of("unit"), format!("unit `{name}` {word} then"))
                 .found("nothing would happen")
@@ -182,12 +153,9 @@ impl Now<'_> {
             return Some(problem);
         }
         (mw.abs() > line.rating_mw).then(|| {
-            Problem::new(
-                place.of("mw"),
-                format!("more than tie `{}` may carry", line.name),
-            )
-            .found(format!("{mw} MW"))
-            .right(format!("its rating is {} MW", line.rating_mw))
+            Problem::new(place.of("mw"), format!("more than tie `{}` may carry", line.name))
+                .found(format!("{mw} MW"))
+                .right(format!("its rating is {} MW", line.rating_mw))
         })
     }
 
@@ -196,14 +164,9 @@ impl Now<'_> {
         let low_mw = unit.min_mw + unit.reserve_down_mw;
         let high_mw = unit.max_mw - unit.reserve_up_mw;
         (mw < low_mw - ROUNDING_MW || mw > high_mw + ROUNDING_MW).then(|| {
-            Problem::new(
-                place.of("mw"),
-                format!("unit `{}` cannot be scheduled there", unit.name),
-            )
-            .found(format!("{mw} MW"))
-            .right(format!(
-                "its normal range less reserve goes from {low_mw} to {high_mw} MW"
-            ))
+            Problem::new(place.of("mw"), format!("unit `{}` cannot be scheduled there", unit.name))
+                .found(format!("{mw} MW"))
+                .right(format!("its normal range less reserve goes from {low_mw} to {high_mw} MW"))
         })
     }
 
@@ -212,30 +175,21 @@ impl Now<'_> {
         let word = if lives { "is alive" } else { "is already dead" };
         (was_alive == lives).then(|| {
             let name = &self.grid.areas[area].name;
-            Problem::new(
-                place.of("area"),
-                format!("the steward of `{name}` {word} then"),
-            )
-            .found("nothing would happen")
+            Problem::new(place.of("area"), format!("the steward of `{name}` {word} then"))
+                .found("nothing would happen")
         })
     }
 
     fn link_outage(&self, (a, b): (usize, usize), place: &Marks) -> Option<Problem> {
         let joins = |line: &&Line| {
-            let ends = (
-                self.grid.buses[line.from].area,
-                self.grid.buses[line.to].area,
-            );
+            let ends = (self.grid.buses[line.from].area, self.grid.buses[line.to].area);
             a != b && (ends == (a, b) || ends == (b, a))
         };
         self.grid.lines.iter().find(joins).is_none().then(|| {
             let (one, other) = (&self.grid.areas[a].name, &self.grid.areas[b].name);
-            Problem::new(
-                place.of("areas"),
-                format!("`{one}` and `{other}` are no neighbours"),
-            )
-            .found("no tie joins them, so no frames pass between them")
-            .right("name two areas that a tie joins")
+            Problem::new(place.of("areas"), format!("`{one}` and `{other}` are no neighbours"))
+                .found("no tie joins them, so no frames pass between them")
+                .right("name two areas that a tie joins")
         })
     }
 

@@ -51,48 +51,23 @@ fn sound<'a, T>(list: &'a [T], marks: &'a [Marks]) -> impl Iterator<Item = (&'a 
 fn check_names(grid: &Grid, marks: &GridMarks, log: &mut Vec<Problem>) {
     let mut unique = |noun: &str, names: Vec<&str>, marks: &[Marks]| {
         for (later, name) in names.iter().enumerate() {
-            let first = names
-                .iter()
-                .position(|other| other == name)
-                .unwrap_or(later);
+            let first = names.iter().position(|other| other == name).unwrap_or(later);
             if first == later || name.is_empty() || marks[later].broken {
                 continue;
             }
-            let problem = Problem::new(
-                marks[later].of("name"),
-                format!("two {noun} are called `{name}`"),
-            )
-            .found("this name is taken")
-            .see(marks[first].of("name"), "first used here")
-            .right("give each a `name` of its own");
+            let problem =
+                Problem::new(marks[later].of("name"), format!("two {noun} are called `{name}`"))
+                    .found("this name is taken")
+                    .see(marks[first].of("name"), "first used here")
+                    .right("give each a `name` of its own");
             log.push(problem);
         }
     };
-    unique(
-        "areas",
-        grid.areas.iter().map(|x| x.name.as_str()).collect(),
-        &marks.areas,
-    );
-    unique(
-        "buses",
-        grid.buses.iter().map(|x| x.name.as_str()).collect(),
-        &marks.buses,
-    );
-    unique(
-        "lines",
-        grid.lines.iter().map(|x| x.name.as_str()).collect(),
-        &marks.lines,
-    );
-    unique(
-        "units",
-        grid.units.iter().map(|x| x.name.as_str()).collect(),
-        &marks.units,
-    );
-    unique(
-        "feeders",
-        grid.feeders.iter().map(|x| x.name.as_str()).collect(),
-        &marks.feeders,
-    );
+    unique("areas", grid.areas.iter().map(|x| x.name.as_str()).collect(), &marks.areas);
+    unique("buses", grid.buses.iter().map(|x| x.name.as_str()).collect(), &marks.buses);
+    unique("lines", grid.lines.iter().map(|x| x.name.as_str()).collect(), &marks.lines);
+    unique("units", grid.units.iter().map(|x| x.name.as_str()).collect(), &marks.units);
+    unique("feeders", grid.feeders.iter().map(|x| x.name.as_str()).collect(), &marks.feeders);
 }
 
 fn check_areas(grid: &Grid, marks: &GridMarks, log: &mut Vec<Problem>) {
@@ -121,42 +96,34 @@ fn check_areas(grid: &Grid, marks: &GridMarks, log: &mut Vec<Problem>) {
 
 fn check_line(line: &Line, buses: &[Bus], place: &Marks, log: &mut Vec<Problem>) {
     if line.from == line.to {
-        let problem = Problem::new(
-            place.of("to"),
-            format!("line `{}` ends where it begins", line.name),
-        )
-        .see(place.of("from"), "the other end")
-        .right("`from` and `to` must be two buses");
+        let problem =
+            Problem::new(place.of("to"), format!("line `{}` ends where it begins", line.name))
+                .see(place.of("from"), "the other end")
+                .right("`from` and `to` must be two buses");
         log.push(problem);
         return;
     }
     let is_tie = buses[line.from].area != buses[line.to].area;
     check_reactance(line, is_tie, place, log);
     if is_tie && line.rating_mw.is_infinite() {
-        let problem = Problem::new(
-            place.of("rating_mw"),
-            format!("tie `{}` has no rating", line.name),
-        )
-        .found("its ends lie in two areas")
-        .right("a tie needs `rating_mw`: both stewards hold its flow within it");
+        let problem =
+            Problem::new(place.of("rating_mw"), format!("tie `{}` has no rating", line.name))
+                .found("its ends lie in two areas")
+                .right("a tie needs `rating_mw`: both stewards hold its flow within it");
         log.push(problem);
     }
     if let Some(schedule_mw) = line.schedule_mw {
         if !is_tie {
-            let problem = Problem::new(
-                place.of("schedule_mw"),
-                format!("line `{}` is no tie", line.name),
-            )
-            .found("only a line between two areas has an agreed flow")
-            .right("take `schedule_mw` out");
+            let problem =
+                Problem::new(place.of("schedule_mw"), format!("line `{}` is no tie", line.name))
+                    .found("only a line between two areas has an agreed flow")
+                    .right("take `schedule_mw` out");
             log.push(problem);
         } else if schedule_mw.abs() > line.rating_mw {
-            let problem = Problem::new(
-                place.of("schedule_mw"),
-                "the agreed flow is above the rating",
-            )
-            .found(format!("{schedule_mw} MW"))
-            .see(place.of("rating_mw"), "the rating");
+            let problem =
+                Problem::new(place.of("schedule_mw"), "the agreed flow is above the rating")
+                    .found(format!("{schedule_mw} MW"))
+                    .see(place.of("rating_mw"), "the rating");
             log.push(problem);
         }
     }
@@ -190,11 +157,8 @@ fn check_short_rating(line: &Line, place: &Marks, log: &mut Vec<Problem>) {
             log.push(problem);
         }
         (Some(_), None) | (None, Some(_)) => {
-            let at = if line.rating_short_mw.is_some() {
-                "rating_short_mw"
-            } else {
-                "rating_short_min"
-            };
+            let at =
+                if line.rating_short_mw.is_some() { "rating_short_mw" } else { "rating_short_min" };
             let problem = Problem::new(place.of(at), "half a short-time rating")
                 .right("`rating_short_mw` and `rating_short_min` go together");
             log.push(problem);
@@ -208,17 +172,11 @@ fn check_unit(unit: &Unit, place: &Marks, log: &mut Vec<Problem>) {
     check_base(unit, place, log);
     let consumes = matches!(unit.kind, UnitKind::Battery | UnitKind::Hydro);
     if !consumes && unit.emergency_min_mw < 0.0 {
-        let key = if unit.min_mw < 0.0 {
-            "min_mw"
-        } else {
-            "emergency_min_mw"
-        };
-        let problem = Problem::new(
-            place.of(key),
-            format!("unit `{}` cannot take power in", unit.name),
-        )
-        .found("below zero")
-        .right("only a battery or a hydro unit (pumping) may have a negative output");
+        let key = if unit.min_mw < 0.0 { "min_mw" } else { "emergency_min_mw" };
+        let problem =
+            Problem::new(place.of(key), format!("unit `{}` cannot take power in", unit.name))
+                .found("below zero")
+                .right("only a battery or a hydro unit (pumping) may have a negative output");
         log.push(problem);
     }
     match (unit.kind, unit.energy_mwh) {
@@ -233,17 +191,11 @@ fn check_unit(unit: &Unit, place: &Marks, log: &mut Vec<Problem>) {
         (UnitKind::Battery, Some(_)) => {}
         (_, None) if !place.has("energy_start") => {}
         (_, energy_mwh) => {
-            let key = if energy_mwh.is_some() {
-                "energy_mwh"
-            } else {
-                "energy_start"
-            };
-            let problem = Problem::new(
-                place.of(key),
-                format!("unit `{}` stores no energy", unit.name),
-            )
-            .found(format!("only a battery has `{key}`"))
-            .right("take it out, or say `kind = \"battery\"`");
+            let key = if energy_mwh.is_some() { "energy_mwh" } else { "energy_start" };
+            let problem =
+                Problem::new(place.of(key), format!("unit `{}` stores no energy", unit.name))
+                    .found(format!("only a battery has `{key}`"))
+                    .right("take it out, or say `kind = \"battery\"`");
             log.push(problem);
         }
     }
@@ -257,12 +209,7 @@ fn check_ranges(unit: &Unit, place: &Marks, log: &mut Vec<Problem>) {
             log.push(problem);
         }
     };
-    crossed(
-        unit.min_mw > unit.max_mw,
-        "min_mw",
-        "max_mw",
-        "`min_mw` is above `max_mw`",
-    );
+    crossed(unit.min_mw > unit.max_mw, "min_mw", "max_mw", "`min_mw` is above `max_mw`");
     crossed(
         unit.emergency_min_mw > unit.min_mw,
         "emergency_min_mw",
@@ -278,11 +225,7 @@ fn check_ranges(unit: &Unit, place: &Marks, log: &mut Vec<Problem>) {
     let reserve_mw = unit.reserve_up_mw + unit.reserve_down_mw;
     crossed(
         unit.min_mw <= unit.max_mw && reserve_mw > unit.max_mw - unit.min_mw + ROUNDING_MW,
-        if unit.reserve_up_mw > 0.0 {
-            "reserve_up_mw"
-        } else {
-            "reserve_down_mw"
-        },
+        if unit.reserve_up_mw > 0.0 { "reserve_up_mw" } else { "reserve_down_mw" },
         "max_mw",
         "the reserve is larger than the normal range",
     );
@@ -333,10 +276,7 @@ fn check_feeders(grid: &Grid, marks: &GridMarks, log: &mut Vec<Problem>) {
                     format!("the feeders of bus `{}` carry more than its load", bus.name),
                 )
                 .found(format!("with this one they carry {sum_mw} MW"))
-                .see(
-                    place.of("load_mw"),
-                    format!("the bus has {} MW", bus.load_mw),
-                )
+                .see(place.of("load_mw"), format!("the bus has {} MW", bus.load_mw))
                 .right("a feeder is a part of its bus's `load_mw`");
                 log.push(problem);
             }
@@ -361,9 +301,7 @@ fn check_balance(grid: &Grid, marks: &GridMarks, log: &mut Vec<Problem>) {
         marks.grid.of("name"),
         format!("generation is {:.3} MW {word} than load", excess_mw.abs()),
     )
-    .found(format!(
-        "units give {generation_mw:.3} MW, buses take {load_mw:.3} MW"
-    ))
+    .found(format!("units give {generation_mw:.3} MW, buses take {load_mw:.3} MW"))
     .right("the base points of the units in service must add up to the load within 0.1 MW");
     log.push(problem);
 }

@@ -43,7 +43,9 @@ pub enum CharterError {
         what: String,
     },
     /// The area's internal lines do not join its buses.
-    #[error("area {area}: its internal lines do not join all its buses, so it has no sensitivities")]
+    #[error(
+        "area {area}: its internal lines do not join all its buses, so it has no sensitivities"
+    )]
     Singular {
         /// Name of the area.
         area: String,

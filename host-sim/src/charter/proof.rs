@@ -233,4 +233,3 @@ fn inverse_laplacian(
     }
     Some(x)
 }
-

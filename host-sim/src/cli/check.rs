@@ -50,16 +50,12 @@ pub fn input_failure(problems: &Problems) -> Failure {
 
 /// Whether a file is a play: by its name, else by its tables.
 fn is_play(path: &Path) -> bool {
-    let name = path
-        .file_name()
-        .map(|name| name.to_string_lossy().into_owned())
-        .unwrap_or_default();
+    let name = path.file_name().map(|name| name.to_string_lossy().into_owned()).unwrap_or_default();
     if name.ends_with(".play.toml") || name.ends_with(".grid.toml") {
         return name.ends_with(".play.toml");
     }
     let text = std::fs::read_to_string(path).unwrap_or_default();
-    text.lines()
-        .any(|line| matches!(line.trim(), "[run]" | "[[event]]"))
+    text.lines().any(|line| matches!(line.trim(), "[run]" | "[[event]]"))
 }
 
 /// The built-in grid with all its plays.
@@ -75,11 +71,7 @@ fn builtin(json: bool) -> String {
 /// What the files hold.
 fn summary(file: &str, grid: &Grid, plays: &[Play], json: bool) -> String {
     let facts = Facts::of(grid);
-    if json {
-        as_json(file, grid, plays, &facts)
-    } else {
-        as_text(file, grid, plays, &facts)
-    }
+    if json { as_json(file, grid, plays, &facts) } else { as_text(file, grid, plays, &facts) }
 }
 
 /// Totals of a grid.
@@ -93,16 +85,9 @@ struct Facts {
 impl Facts {
     fn of(grid: &Grid) -> Self {
         let area = |bus: usize| grid.buses[bus].area;
-        let in_service = grid
-            .units
-            .iter()
-            .filter(|unit| unit.status != UnitStatus::Off);
+        let in_service = grid.units.iter().filter(|unit| unit.status != UnitStatus::Off);
         Self {
-            ties: grid
-                .lines
-                .iter()
-                .filter(|line| area(line.from) != area(line.to))
-                .count(),
+            ties: grid.lines.iter().filter(|line| area(line.from) != area(line.to)).count(),
             load_mw: total(grid.buses.iter().map(|bus| bus.load_mw)),
             generation_mw: total(in_service.map(|unit| unit.base_mw)),
             feeders_mw: total(grid.feeders.iter().map(|feeder| feeder.load_mw)),
@@ -124,12 +109,7 @@ fn as_text(file: &str, grid: &Grid, plays: &[Play], facts: &Facts) -> String {
     );
     let _ = writeln!(out, "    areas       {:>8}", grid.areas.len());
     let _ = writeln!(out, "    buses       {:>8}", grid.buses.len());
-    let _ = writeln!(
-        out,
-        "    lines       {:>8}, of which {} ties",
-        grid.lines.len(),
-        facts.ties
-    );
+    let _ = writeln!(out, "    lines       {:>8}, of which {} ties", grid.lines.len(), facts.ties);
     let _ = writeln!(out, "    load        {:>8.1} MW", facts.load_mw);
     let _ = writeln!(
         out,
@@ -137,12 +117,7 @@ fn as_text(file: &str, grid: &Grid, plays: &[Play], facts: &Facts) -> String {
         facts.generation_mw,
         grid.units.len()
     );
-    let _ = writeln!(
-        out,
-        "    feeders     {:>8.1} MW in {}",
-        facts.feeders_mw,
-        grid.feeders.len()
-    );
+    let _ = writeln!(out, "    feeders     {:>8.1} MW in {}", facts.feeders_mw, grid.feeders.len());
     for (index, area) in grid.areas.iter().enumerate() {
         let (mut buses, mut load_mw) = (0, 0.0);
         for bus in grid.buses.iter().filter(|bus| bus.area == index) {
@@ -150,12 +125,8 @@ fn as_text(file: &str, grid: &Grid, plays: &[Play], facts: &Facts) -> String {
             load_mw += bus.load_mw;
         }
         let inside = |bus: usize| grid.buses[bus].area == index;
-        let base_mw = total(
-            grid.units
-                .iter()
-                .filter(|unit| inside(unit.bus))
-                .map(|unit| unit.base_mw),
-        );
+        let base_mw =
+            total(grid.units.iter().filter(|unit| inside(unit.bus)).map(|unit| unit.base_mw));
         let _ = writeln!(
             out,
             "    area        {}: {buses} buses, load {load_mw:.1} MW, generation {base_mw:.1} MW",
@@ -223,18 +194,12 @@ mod tests {
     fn prints_one_json_document() {
         let document: serde_json::Value = serde_json::from_str(&builtin(true)).expect("JSON");
         assert_eq!(document["buses"], 30);
-        assert_eq!(
-            document["plays"].as_array().map(Vec::len),
-            Some(builtin_plays().len())
-        );
+        assert_eq!(document["plays"].as_array().map(Vec::len), Some(builtin_plays().len()));
     }
 
     #[test]
     fn says_wrong_input_for_a_file_that_is_not_there() {
-        let args = Args {
-            file: Some(PathBuf::from("no/such.play.toml")),
-            json: false,
-        };
+        let args = Args { file: Some(PathBuf::from("no/such.play.toml")), json: false };
         assert!(
             matches!(run(&args), Err(Failure::Input(text)) if text.contains("no/such.play.toml"))
         );

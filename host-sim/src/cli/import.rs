@@ -34,10 +34,7 @@ pub fn run(args: &Args) -> Result<Ending, Failure> {
     let source = args.file.display();
     let bytes = std::fs::read(&args.file)
         .map_err(|err| Failure::Input(format!("cannot read {source}: {err}")))?;
-    let target = args
-        .out
-        .clone()
-        .unwrap_or_else(|| args.file.with_extension("grid.toml"));
+    let target = args.out.clone().unwrap_or_else(|| args.file.with_extension("grid.toml"));
     refuse_overwrite(&target, args.force)?;
     let imported =
         import(&bytes, &source.to_string()).map_err(|problems| input_failure(&problems))?;
@@ -68,12 +65,7 @@ mod tests {
     fn says_wrong_input_for_a_file_that_is_no_case() {
         let path = std::env::temp_dir().join(format!("hedgerow-nocase-{}.cdf", std::process::id()));
         std::fs::write(&path, "nothing of the kind\n").expect("a file");
-        let args = Args {
-            file: path.clone(),
-            out: None,
-            force: false,
-            json: false,
-        };
+        let args = Args { file: path.clone(), out: None, force: false, json: false };
         let ending = run(&args);
         std::fs::remove_file(&path).expect("the test's file goes again");
         assert!(matches!(ending, Err(Failure::Input(text)) if text.contains("BUS DATA FOLLOWS")));
@@ -82,10 +74,7 @@ mod tests {
 
     #[test]
     fn prints_the_rules_as_one_json_document() {
-        let imported = Imported {
-            text: String::new(),
-            rules: vec!["a rule".to_owned()],
-        };
+        let imported = Imported { text: String::new(), rules: vec!["a rule".to_owned()] };
         let text = told(Path::new("x.grid.toml"), &imported, true);
         let document: serde_json::Value = serde_json::from_str(&text).expect("JSON");
         assert_eq!(document["rules"][0], "a rule");

@@ -74,9 +74,9 @@ pub fn run(cli: &Cli) -> Result<Ending, Failure> {
 pub fn put(text: &str) -> Result<(), Failure> {
     let mut out = std::io::stdout().lock();
     match out.write_all(text.as_bytes()).and_then(|()| out.flush()) {
-        Err(e) if e.kind() != std::io::ErrorKind::BrokenPipe => Err(Failure::Environment(format!(
-            "cannot write to standard output: {e}"
-        ))),
+        Err(e) if e.kind() != std::io::ErrorKind::BrokenPipe => {
+            Err(Failure::Environment(format!("cannot write to standard output: {e}")))
+        }
         _ => Ok(()),
     }
 }

@@ -81,10 +81,7 @@ mod tests {
     #[test]
     fn writes_a_play_that_reads_back_with_its_grid() {
         let dir = Dir::new("new");
-        let args = Args {
-            dir: dir.0.join("deep"),
-            force: false,
-        };
+        let args = Args { dir: dir.0.join("deep"), force: false };
         assert_eq!(run(&args), Ok(Ending::Kept));
         let (grid, play) = read_play(&args.dir.join("starter.play.toml")).expect("it is right");
         assert_eq!((grid.name.as_str(), play.events.len()), ("Starter", 2));
@@ -93,24 +90,14 @@ mod tests {
     #[test]
     fn overwrites_only_when_told_to_and_then_both() {
         let dir = Dir::new("again");
-        let args = |force| Args {
-            dir: dir.0.clone(),
-            force,
-        };
+        let args = |force| Args { dir: dir.0.clone(), force };
         std::fs::create_dir_all(&dir.0).expect("a directory");
         let mine = dir.0.join("starter.play.toml");
         std::fs::write(&mine, "mine").expect("a file");
         assert!(matches!(run(&args(false)), Err(Failure::Input(text)) if text.contains("--force")));
         assert_eq!(std::fs::read_to_string(&mine).expect("still there"), "mine");
-        assert!(
-            !dir.0.join("starter.grid.toml").exists(),
-            "none is written when one is refused"
-        );
+        assert!(!dir.0.join("starter.grid.toml").exists(), "none is written when one is refused");
         assert_eq!(run(&args(true)), Ok(Ending::Kept));
-        assert!(
-            std::fs::read_to_string(&mine)
-                .expect("written")
-                .starts_with("# A play")
-        );
+        assert!(std::fs::read_to_string(&mine).expect("written").starts_with("# A play"));
     }
 }

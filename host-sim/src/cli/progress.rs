@@ -42,8 +42,7 @@ impl Progress {
             let bar = ProgressBar::with_draw_target(Some(STEPS), ProgressDrawTarget::stderr());
             let look = ProgressStyle::with_template("{msg} [{bar:30}] {percent:>3} %  {eta} left");
             bar.set_style(
-                look.unwrap_or_else(|_| ProgressStyle::default_bar())
-                    .progress_chars("=> "),
+                look.unwrap_or_else(|_| ProgressStyle::default_bar()).progress_chars("=> "),
             );
             bar.set_message(self.what.clone());
             bar

@@ -183,14 +183,7 @@ fn target(args: &Args, play: &Play) -> (PathBuf, Existing) {
         (Some(dir), false) => (dir.clone(), Existing::Refuse),
         (None, force) => {
             let dir = Path::new("hedgerow-out").join(dir_name(&play.name));
-            (
-                dir,
-                if force {
-                    Existing::Replace
-                } else {
-                    Existing::ReplaceOwn
-                },
-            )
+            (dir, if force { Existing::Replace } else { Existing::ReplaceOwn })
         }
     }
 }
@@ -199,13 +192,7 @@ fn target(args: &Args, play: &Play) -> (PathBuf, Existing) {
 fn dir_name(play: &str) -> String {
     let safe: String = play
         .chars()
-        .map(|c| {
-            if c.is_alphanumeric() || "-_.".contains(c) {
-                c
-            } else {
-                '-'
-            }
-        })
+        .map(|c| if c.is_alphanumeric() || "-_.".contains(c) { c } else { '-' })
         .collect();
     match safe.trim_matches('.') {
         "" => "play".to_owned(),
@@ -249,19 +236,14 @@ fn run_one(
     args: &Args,
     stop: &AtomicBool,
 ) -> Result<Recording, Failure> {
-    let mut progress = Progress::new(
-        &format!("{} ({})", play.name, scheme_word(scheme)),
-        args.quiet,
-    );
+    let mut progress =
+        Progress::new(&format!("{} ({})", play.name, scheme_word(scheme)), args.quiet);
     rehearse(grid, play, scheme, &mut |share| {
         progress.at(share);
         !stop.load(Ordering::Relaxed)
     })
     .map_err(|error| {
-        Failure::Input(format!(
-            "the rehearsal of {} cannot go on: {error}",
-            play.name
-        ))
+        Failure::Input(format!("the rehearsal of {} cannot go on: {error}", play.name))
     })
 }
 
@@ -304,21 +286,13 @@ mod tests {
     #[test]
     fn compare_keeps_the_chosen_scheme_first() {
         let args = parsed("hedgerow rehearse shed --compare --scheme droop");
-        assert_eq!(
-            schemes(&args),
-            [Scheme::Droop, Scheme::Steward, Scheme::AreaControlError]
-        );
+        assert_eq!(schemes(&args), [Scheme::Droop, Scheme::Steward, Scheme::AreaControlError]);
     }
 
     #[test]
     fn an_unknown_play_names_the_known_ones() {
-        let Err(Failure::Input(text)) = find("storm") else {
-            panic!("found it")
-        };
-        assert!(
-            text.contains("`storm`") && text.contains(DEFAULT_PLAY),
-            "{text}"
-        );
+        let Err(Failure::Input(text)) = find("storm") else { panic!("found it") };
+        assert!(text.contains("`storm`") && text.contains(DEFAULT_PLAY), "{text}");
     }
 
     #[test]
@@ -334,10 +308,7 @@ mod tests {
             (dir.as_path(), existing),
             (Path::new("hedgerow-out/quillon"), Existing::ReplaceOwn)
         );
-        assert_eq!(
-            target(&parsed("hedgerow rehearse --out x"), &play).1,
-            Existing::Refuse
-        );
+        assert_eq!(target(&parsed("hedgerow rehearse --out x"), &play).1, Existing::Refuse);
         assert_eq!(
             target(&parsed("hedgerow rehearse --out x --force"), &play).1,
             Existing::Replace
@@ -361,10 +332,7 @@ mod tests {
     fn every_command_shows_an_example() {
         use clap::CommandFactory;
         for command in Cli::command().get_subcommands() {
-            let help = command
-                .get_after_help()
-                .map(ToString::to_string)
-                .unwrap_or_default();
+            let help = command.get_after_help().map(ToString::to_string).unwrap_or_default();
             assert!(help.contains("Example"), "{} has none", command.get_name());
         }
     }

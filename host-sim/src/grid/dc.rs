@@ -209,10 +209,7 @@ impl DcNetwork {
                 .fold(0.0_f64, |max, flow| max.max(flow.abs()));
         let residual = self.residual_mw(injection_mw, &angle_rad);
         // Written so that a residual that is no number is refused too.
-        if residual
-            .iter()
-            .all(|value| value.abs() <= RESIDUAL_TOL * scale)
-        {
+        if residual.iter().all(|value| value.abs() <= RESIDUAL_TOL * scale) {
             Ok(angle_rad)
         } else {
             Err(DcError::Singular)
@@ -310,11 +307,7 @@ fn check_length(what: &'static str, found: usize, expected: usize) -> Result<(),
     if found == expected {
         return Ok(());
     }
-    Err(DcError::Length {
-        what,
-        found,
-        expected,
-    })
+    Err(DcError::Length { what, found, expected })
 }
 
 /// MW of flow per rad of angle across every line.
@@ -326,10 +319,7 @@ pub(crate) fn susceptances_mw(grid: &Grid) -> Result<Vec<f64>, DcError> {
             if susceptance_mw.is_finite() && susceptance_mw != 0.0 {
                 Ok(susceptance_mw)
             } else {
-                Err(DcError::Reactance {
-                    line: line.name.clone(),
-                    reactance_pu: line.reactance_pu,
-                })
+                Err(DcError::Reactance { line: line.name.clone(), reactance_pu: line.reactance_pu })
             }
         })
         .collect()

@@ -34,10 +34,8 @@ fn splits_a_triangle_by_reactance() {
 fn meets_the_39_bus_flows_of_the_reference_set() {
     // Reference set: DC flows, susceptance 1/x, taps ignored.
     let grid = new_england();
-    let solution = DcNetwork::new(&grid, &closed(&grid))
-        .unwrap()
-        .flows_mw(&injections(&grid))
-        .unwrap();
+    let solution =
+        DcNetwork::new(&grid, &closed(&grid)).unwrap().flows_mw(&injections(&grid)).unwrap();
     let expected = [
         (0, -129.07499714),
         (2, 377.1416863),
@@ -83,10 +81,8 @@ fn takes_a_negative_reactance_where_the_matrix_is_not_definite() {
     add_line(&mut grid, 0, 1, 0.2);
     add_line(&mut grid, 1, 2, -0.05);
     add_line(&mut grid, 0, 2, 0.1);
-    let solution = DcNetwork::new(&grid, &[true; 3])
-        .unwrap()
-        .flows_mw(&[100.0, 0.0, -100.0])
-        .unwrap();
+    let solution =
+        DcNetwork::new(&grid, &[true; 3]).unwrap().flows_mw(&[100.0, 0.0, -100.0]).unwrap();
     // Path 1-2-3 has 0.15 pu against 0.1 pu: it takes 40 of 100 MW.
     assert!((solution.flow_mw[0] - 40.0).abs() < 1e-10);
     assert!((solution.flow_mw[1] - 40.0).abs() < 1e-10);
@@ -120,8 +116,5 @@ fn refuses_a_list_of_the_wrong_length() {
     add_bus(&mut grid, 0.0);
     let network = DcNetwork::new(&grid, &[]).unwrap();
     assert_eq!(network.flows_mw(&[0.0]).unwrap().angle_rad, vec![0.0]);
-    assert!(matches!(
-        network.flows_mw(&[]),
-        Err(DcError::Length { expected: 1, .. })
-    ));
+    assert!(matches!(network.flows_mw(&[]), Err(DcError::Length { expected: 1, .. })));
 }

@@ -47,12 +47,7 @@ struct Adjacency {
 
 impl Adjacency {
     fn new(node_count: usize, edges: &[(usize, usize)], closed: &[bool]) -> Self {
-        let used = || {
-            edges
-                .iter()
-                .enumerate()
-                .filter(|&(edge, &(a, b))| closed[edge] && a != b)
-        };
+        let used = || edges.iter().enumerate().filter(|&(edge, &(a, b))| closed[edge] && a != b);
         let mut start = vec![0; node_count + 1];
         for (_, &(a, b)) in used() {
             start[a + 1] += 1;
@@ -234,11 +229,7 @@ fn reduced_laplacian(
 ) -> Vec<Vec<i128>> {
     let size = node_count - 1;
     let mut matrix = vec![vec![0; size]; size];
-    for (&(a, b), _) in edges
-        .iter()
-        .zip(closed)
-        .filter(|&(_, &is_closed)| is_closed)
-    {
+    for (&(a, b), _) in edges.iter().zip(closed).filter(|&(_, &is_closed)| is_closed) {
         if a == b {
             continue;
         }
@@ -275,10 +266,8 @@ fn exact_determinant(mut matrix: Vec<Vec<i128>>) -> Option<u128> {
 
 fn log_determinant(matrix: &[Vec<i128>]) -> f64 {
     let size = matrix.len();
-    let mut work: Vec<Vec<f64>> = matrix
-        .iter()
-        .map(|row| row.iter().map(|&value| value as f64).collect())
-        .collect();
+    let mut work: Vec<Vec<f64>> =
+        matrix.iter().map(|row| row.iter().map(|&value| value as f64).collect()).collect();
     let mut log = 0.0;
     for pivot in 0..size {
         let (above, below) = work.split_at_mut(pivot + 1);

@@ -20,10 +20,7 @@ pub fn empty(nominal_hz: f64) -> Grid {
 
 /// An area that may go down to the last rung.
 pub fn area(name: &str) -> Area {
-    Area {
-        name: name.to_string(),
-        lowest_rung: 3,
-    }
+    Area { name: name.to_string(), lowest_rung: 3 }
 }
 
 /// Add a bus with this load, undamped, in the first area.

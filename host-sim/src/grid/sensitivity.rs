@@ -108,11 +108,8 @@ impl Sensitivity {
         let mut factors = self.transfer_column(from, to)?;
         let rest = 1.0 - factors[line];
         for (other, factor) in factors.iter_mut().enumerate() {
-            *factor = if self.blocks.block_of_edge[other] == Some(block) {
-                *factor / rest
-            } else {
-                0.0
-            };
+            *factor =
+                if self.blocks.block_of_edge[other] == Some(block) { *factor / rest } else { 0.0 };
         }
         factors[line] = -1.0;
         if factors.iter().all(|factor| factor.is_finite()) {

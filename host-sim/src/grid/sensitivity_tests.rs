@@ -7,15 +7,9 @@ fn barbell() -> Grid {
     for _ in 0..6 {
         add_bus(&mut grid, 0.0);
     }
-    for (from, to, reactance_pu) in [
-        (0, 1, 0.1),
-        (1, 2, 0.2),
-        (2, 0, 0.3),
-        (2, 3, 0.1),
-        (3, 4, 0.1),
-        (4, 5, 0.1),
-        (5, 3, 0.1),
-    ] {
+    for (from, to, reactance_pu) in
+        [(0, 1, 0.1), (1, 2, 0.2), (2, 0, 0.3), (2, 3, 0.1), (3, 4, 0.1), (4, 5, 0.1), (5, 3, 0.1)]
+    {
         add_line(&mut grid, from, to, reactance_pu);
     }
     grid
@@ -73,10 +67,7 @@ fn a_transfer_between_islands_is_refused() {
     let mut closed = [true; 7];
     closed[3] = false;
     let factors = Sensitivity::new(&barbell(), &closed).unwrap();
-    assert!(matches!(
-        factors.transfer_column(0, 4),
-        Err(DcError::Imbalance { .. })
-    ));
+    assert!(matches!(factors.transfer_column(0, 4), Err(DcError::Imbalance { .. })));
 }
 
 #[test]
@@ -99,10 +90,7 @@ fn outage_factors_agree_with_solving_again_on_39_buses() {
             }
         };
         closed[line] = false;
-        let again = DcNetwork::new(&grid, &closed)
-            .unwrap()
-            .flows_mw(&injection)
-            .unwrap();
+        let again = DcNetwork::new(&grid, &closed).unwrap().flows_mw(&injection).unwrap();
         closed[line] = true;
         for (other, flow) in again.flow_mw.iter().enumerate() {
             let predicted = before[other] + after[other] * before[line];
@@ -111,9 +99,6 @@ fn outage_factors_agree_with_solving_again_on_39_buses() {
     }
     // Nine machine transformers and the branch 19-20 chain islands; counted by
     // the definition in `graph`.
-    assert_eq!(
-        bridges,
-        factors.blocks().is_bridge.iter().filter(|&&b| b).count()
-    );
+    assert_eq!(bridges, factors.blocks().is_bridge.iter().filter(|&&b| b).count());
     assert!(bridges >= 9);
 }

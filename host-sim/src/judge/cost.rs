@@ -74,20 +74,12 @@ pub(super) fn of_point(setting: &Setting, point: &Point) -> f64 {
             Some(0.5 * grid.units[u].cost_per_pu2 * off * off)
         })
         .sum();
-    let sheds: f64 = grid
-        .feeders
-        .iter()
-        .zip(&point.shed)
-        .map(|(f, s)| f.price_per_pu * s + 0.5 * s * s)
-        .sum();
+    let sheds: f64 =
+        grid.feeders.iter().zip(&point.shed).map(|(f, s)| f.price_per_pu * s + 0.5 * s * s).sum();
     let price = setting.play.steward.tie_price_per_pu;
     let square = |v: f64| 0.5 * TIE_CURVATURE * v * v;
-    let ties: f64 = point
-        .dt
-        .iter()
-        .flatten()
-        .map(|dt| 2.0 * (price * dt.abs() + square(*dt)))
-        .sum();
+    let ties: f64 =
+        point.dt.iter().flatten().map(|dt| 2.0 * (price * dt.abs() + square(*dt))).sum();
     let mids: f64 = point.mid.iter().flatten().map(|mu| 2.0 * square(*mu)).sum();
     units + sheds + ties + mids
 }
@@ -104,11 +96,7 @@ pub(super) fn of_recording(setting: &Setting) -> f64 {
         unit: (0..grid.units.len())
             .map(|u| unknowns.unit[u].map(|_| setting.pu(end.unit_setpoint_mw[u])))
             .collect(),
-        shed: end
-            .feeder_shed_mw
-            .iter()
-            .map(|mw| setting.pu(*mw))
-            .collect(),
+        shed: end.feeder_shed_mw.iter().map(|mw| setting.pu(*mw)).collect(),
         dt,
         mid: mid_deviations(setting, &open),
     };
@@ -136,11 +124,8 @@ fn metered_angles(setting: &Setting) -> Vec<f64> {
         // Each pass reaches at least one more bus, or there is none left to reach.
         for _ in 0..grid.buses.len() {
             let mut reached = false;
-            for (line, l) in grid
-                .lines
-                .iter()
-                .enumerate()
-                .filter(|(i, _)| setting.end.line_closed[*i])
+            for (line, l) in
+                grid.lines.iter().enumerate().filter(|(i, _)| setting.end.line_closed[*i])
             {
                 let drop = l.reactance_pu * setting.pu(setting.end.line_flow_mw[line]);
                 match (angle[l.from], angle[l.to]) {
@@ -172,9 +157,8 @@ fn mid_deviations(setting: &Setting, open: &[bool]) -> Vec<Option<f64>> {
             if !(is_tie(grid, line) && open[line] && held(line)) {
                 return None;
             }
-            let peers: Vec<usize> = (0..grid.lines.len())
-                .filter(|&l| held(l) && group(l) == group(line))
-                .collect();
+            let peers: Vec<usize> =
+                (0..grid.lines.len()).filter(|&l| held(l) && group(l) == group(line)).collect();
             // Closed ties hold the reference; without any, it is the one of least cost.
             let closed: Vec<usize> = peers.iter().copied().filter(|&l| !open[l]).collect();
             let by = if closed.is_empty() { &peers } else { &closed };

@@ -102,13 +102,7 @@ fn frequency(setting: &Setting, found: &mut Found) {
         Some(bus) => format!("island of {}", setting.grid.buses[bus].name),
         None => format!("island {island}"),
     };
-    let mut f = fact(
-        "frequency off nominal",
-        worst_hz * 1e3,
-        REST_HZ * 1e3,
-        "mHz",
-        &place,
-    );
+    let mut f = fact("frequency off nominal", worst_hz * 1e3, REST_HZ * 1e3, "mHz", &place);
     f.met = worst_hz < REST_HZ;
     found.add(f, |f| {
         format!(
@@ -120,26 +114,17 @@ fn frequency(setting: &Setting, found: &mut Found) {
 
 /// Whether a closed tie has a flow somebody agreed on.
 fn has_schedule(setting: &Setting, line: usize) -> bool {
-    setting
-        .topology
-        .is_live_tie(setting.grid, setting.end, line)
+    setting.topology.is_live_tie(setting.grid, setting.end, line)
 }
 
 fn ties(setting: &Setting, found: &mut Found) {
     let (grid, end) = (setting.grid, setting.end);
     let open = setting.open_ties();
-    for (is_open, name) in [
-        (false, "tie off schedule"),
-        (true, "tie off the agreed flow"),
-    ] {
+    for (is_open, name) in [(false, "tie off schedule"), (true, "tie off the agreed flow")] {
         let off = (0..grid.lines.len())
             .filter(|&l| has_schedule(setting, l) && open[l] == is_open)
             .map(|l| {
-                let wanted = if is_open {
-                    end.agreed_mw[l]
-                } else {
-                    end.schedule_mw[l]
-                };
+                let wanted = if is_open { end.agreed_mw[l] } else { end.schedule_mw[l] };
                 ((end.line_flow_mw[l] - wanted).abs(), (l, wanted))
             });
         let Some((worst, (line, wanted))) = worst_of(off) else {
@@ -168,13 +153,7 @@ fn ratings(setting: &Setting, found: &mut Found) {
     let Some((worst, line)) = worst_of(loaded.into_iter()) else {
         return;
     };
-    let f = fact(
-        "line loading",
-        worst * 100.0,
-        RATING_SHARE * 100.0,
-        "%",
-        &grid.lines[line].name,
-    );
+    let f = fact("line loading", worst * 100.0, RATING_SHARE * 100.0, "%", &grid.lines[line].name);
     let (flow, rating) = (end.line_flow_mw[line].abs(), grid.lines[line].rating_mw);
     found.add(f, |f| {
         let others = match over {
@@ -219,15 +198,12 @@ fn costs(reference: &Reference, cost: f64, found: &mut Found) {
         return;
     };
     let limit = optimum + (COST_SHARE * optimum.abs()).max(COST_FLOOR);
-    found.add(
-        fact("cost of the set-points", cost, limit, "cost", "whole grid"),
-        |f| {
-            format!(
-                "The set-points cost {:.4}, the optimum {optimum:.4} (limit {:.4}).",
-                f.worst, f.limit
-            )
-        },
-    );
+    found.add(fact("cost of the set-points", cost, limit, "cost", "whole grid"), |f| {
+        format!(
+            "The set-points cost {:.4}, the optimum {optimum:.4} (limit {:.4}).",
+            f.worst, f.limit
+        )
+    });
 }
 
 fn sheds(setting: &Setting, recording: &Recording, reference: &Reference, found: &mut Found) {
@@ -269,13 +245,7 @@ fn proofs(setting: &Setting, recording: &Recording, found: &mut Found) {
         None => "all".to_owned(),
     };
     found.add(
-        fact(
-            "proofs refused by the host",
-            refused.len() as f64,
-            0.0,
-            "proofs",
-            &place,
-        ),
+        fact("proofs refused by the host", refused.len() as f64, 0.0, "proofs", &place),
         |f| {
             format!(
                 "{:.0} of {} proofs did not stand up on the host, first that of {}.",

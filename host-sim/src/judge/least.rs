@@ -43,10 +43,7 @@ fn feasible(setting: &Setting, rungs: &[u8]) -> Result<bool, String> {
 /// Areas that cannot meet their limits at `keep` alone.
 pub(super) fn short_areas(setting: &Setting) -> Result<Vec<usize>, String> {
     let keep = vec![0; setting.grid.areas.len()];
-    let at_keep = Setting {
-        rungs: &keep,
-        ..*setting
-    };
+    let at_keep = Setting { rungs: &keep, ..*setting };
     let mut short = Vec::new();
     for area in 0..setting.grid.areas.len() {
         if !setting.topology.without_reference(area)
@@ -65,13 +62,7 @@ pub(super) fn least_rungs(setting: &Setting) -> Result<Least, String> {
     let short = short_areas(setting)?;
     let lowest = |area: usize| setting.grid.areas[area].lowest_rung.min(3);
     let mut rungs: Vec<u8> = (0..setting.grid.areas.len())
-        .map(|a| {
-            if setting.topology.without_reference(a) {
-                setting.rungs[a]
-            } else {
-                0
-            }
-        })
+        .map(|a| if setting.topology.without_reference(a) { setting.rungs[a] } else { 0 })
         .collect();
     let mut found = false;
     for rung in u8::from(!short.is_empty())..=3 {
@@ -82,21 +73,12 @@ pub(super) fn least_rungs(setting: &Setting) -> Result<Least, String> {
         }
     }
     if !found {
-        let short_pu = violation_pu(
-            &Setting {
-                rungs: &rungs,
-                ..*setting
-            },
-            Scope::Whole,
-        )?;
+        let short_pu = violation_pu(&Setting { rungs: &rungs, ..*setting }, Scope::Whole)?;
         let all = (0..rungs.len()).collect();
         let named = if short.is_empty() { &all } else { &short };
         return Ok(Least::Beyond {
             short_mw: short_pu * setting.grid.base_mva,
-            areas: named
-                .iter()
-                .map(|&a| setting.grid.areas[a].name.clone())
-                .collect(),
+            areas: named.iter().map(|&a| setting.grid.areas[a].name.clone()).collect(),
         });
     }
     for &area in &short {

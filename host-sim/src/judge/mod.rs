@@ -119,11 +119,7 @@ pub fn judge(grid: &Grid, play: &Play, recording: &Recording) -> Judgement {
     let found = facts::gather(&setting, recording, &reference, cost);
     let broken_by: Vec<String> = found.broken_by;
     Judgement {
-        outcome: if broken_by.is_empty() {
-            Outcome::Kept
-        } else {
-            Outcome::Broken
-        },
+        outcome: if broken_by.is_empty() { Outcome::Kept } else { Outcome::Broken },
         broken_by,
         least_rung: reference.least_rung.unwrap_or(final_rungs),
         cost,
@@ -166,14 +162,8 @@ fn refer(
     not_judged: &mut Vec<String>,
 ) -> Reference {
     let recorded = final_rungs(grid, recording);
-    let setting = Setting {
-        grid,
-        play,
-        end: &recording.end,
-        topology,
-        rungs: &recorded,
-        sheds: Sheds::Free,
-    };
+    let setting =
+        Setting { grid, play, end: &recording.end, topology, rungs: &recorded, sheds: Sheds::Free };
     let least_rung = match least::least_rungs(&setting) {
         Ok(least::Least::Rungs(rungs)) => rungs,
         Ok(least::Least::Beyond { short_mw, areas }) => {
@@ -188,14 +178,8 @@ fn refer(
             return Reference::default();
         }
     };
-    let mut reference = Reference {
-        least_rung: Some(least_rung.clone()),
-        ..Reference::default()
-    };
-    match cost::optimum(&Setting {
-        rungs: &least_rung,
-        ..setting
-    }) {
+    let mut reference = Reference { least_rung: Some(least_rung.clone()), ..Reference::default() };
+    match cost::optimum(&Setting { rungs: &least_rung, ..setting }) {
         Ok(point) => reference.least_shed_mw = cost::area_sheds_mw(grid, &point),
         Err(why) => not_judged.push(format!("No reference for the load shed: {why}.")),
     }
@@ -204,11 +188,7 @@ fn refer(
     }
     // A breaker takes a whole feeder: the cost is held against the best that is
     // possible with the breakers where they stand; the shedding is judged apart.
-    let standing = Setting {
-        rungs: &least_rung,
-        sheds: Sheds::SwitchedAsTheyStand,
-        ..setting
-    };
+    let standing = Setting { rungs: &least_rung, sheds: Sheds::SwitchedAsTheyStand, ..setting };
     match cost::optimum(&standing) {
         Ok(point) => reference.optimum_cost = Some(cost::of_point(&standing, &point)),
         Err(why) => not_judged.push(format!("No reference for the cost: {why}.")),

@@ -74,12 +74,7 @@ pub(super) fn build(setting: &Setting, scope: Scope, slack: Slack) -> (Program, 
         program: Program::default(),
         unknowns: Unknowns::default(),
         balance: vec![Vec::new(); grid.buses.len()],
-        load_pu: setting
-            .end
-            .bus_load_mw
-            .iter()
-            .map(|mw| setting.pu(*mw))
-            .collect(),
+        load_pu: setting.end.bus_load_mw.iter().map(|mw| setting.pu(*mw)).collect(),
     };
     if slack == Slack::Elastic {
         let z = builder.program.add(0.0, 1.0);
@@ -164,11 +159,7 @@ impl Builder<'_> {
                 None
             } else {
                 let price = self.setting.grid.feeders[feeder].price_per_pu;
-                let (curve, slope) = if self.cost_counts() {
-                    (1.0, price)
-                } else {
-                    (0.0, 0.0)
-                };
+                let (curve, slope) = if self.cost_counts() { (1.0, price) } else { (0.0, 0.0) };
                 let s = self.program.add(curve, slope);
                 self.program.bound(s, low, high);
                 self.balance[bus].push((s, 1.0));
@@ -206,10 +197,7 @@ impl Builder<'_> {
     }
 
     fn put_flow_on_buses(&mut self, line: usize, flow: &Terms) {
-        let (from, to) = (
-            self.setting.grid.lines[line].from,
-            self.setting.grid.lines[line].to,
-        );
+        let (from, to) = (self.setting.grid.lines[line].from, self.setting.grid.lines[line].to);
         self.balance[from].extend(flow.iter().map(|&(i, f)| (i, -f)));
         self.balance[to].extend(flow);
     }
@@ -274,9 +262,7 @@ impl Builder<'_> {
             // A dead steward holds nothing: its neighbours keep their net exchange with it.
             for (area, sign) in [(a, 1.0), (b, -1.0)] {
                 if topology.alive[area] {
-                    net_of_dead[area]
-                        .0
-                        .extend(flow.iter().map(|&(i, f)| (i, sign * f)));
+                    net_of_dead[area].0.extend(flow.iter().map(|&(i, f)| (i, sign * f)));
                     net_of_dead[area].1 += sign * schedule;
                 }
             }
@@ -331,11 +317,7 @@ impl Builder<'_> {
         row.push((kappa, b));
         let base = (self.setting.topology.base_mid_angle[line] - given) * b;
         if open {
-            let curve = if self.cost_counts() {
-                2.0 * TIE_CURVATURE
-            } else {
-                0.0
-            };
+            let curve = if self.cost_counts() { 2.0 * TIE_CURVATURE } else { 0.0 };
             let mu = self.program.add(curve, 0.0);
             row.push((mu, -1.0));
             self.program.equal(row, base);
@@ -354,10 +336,7 @@ impl Builder<'_> {
             (false, true) => (l.to, -1.0),
             (false, false) => return,
         };
-        let live = self
-            .setting
-            .topology
-            .is_live_tie(grid, self.setting.end, line);
+        let live = self.setting.topology.is_live_tie(grid, self.setting.end, line);
         let flow_mw = match live {
             true => self.setting.end.schedule_mw[line],
             false => self.setting.end.line_flow_mw[line],

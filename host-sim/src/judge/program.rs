@@ -68,10 +68,8 @@ impl Program {
         let n = self.curve.len();
         let curvature = diagonal(&self.curve);
         let (rows, rhs) = stack(&self.equal, &self.at_most, n);
-        let cones: [SupportedConeT<f64>; 2] = [
-            ZeroConeT(self.equal.len()),
-            NonnegativeConeT(self.at_most.len()),
-        ];
+        let cones: [SupportedConeT<f64>; 2] =
+            [ZeroConeT(self.equal.len()), NonnegativeConeT(self.at_most.len())];
         let mut solver =
             DefaultSolver::new(&curvature, &self.slope, &rows, &rhs, &cones, settings())
                 .map_err(|e| format!("the reference solver refused the problem ({e:?})"))?;
@@ -114,10 +112,7 @@ fn stack(equal: &[Row], at_most: &[Row], columns: usize) -> (CscMatrix<f64>, Vec
         }
         rhs.push(*right);
     }
-    (
-        CscMatrix::new_from_triplets(rhs.len(), columns, i, j, v),
-        rhs,
-    )
+    (CscMatrix::new_from_triplets(rhs.len(), columns, i, j, v), rhs)
 }
 
 /// Parallel lines name a bus angle twice: add such factors up.

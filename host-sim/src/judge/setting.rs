@@ -56,8 +56,7 @@ impl Setting<'_> {
 
     /// Ties open to help at these rungs.
     pub(super) fn open_ties(&self) -> Vec<bool> {
-        self.topology
-            .open_ties(self.grid, self.end, self.rungs, self.play.steward.help_hops)
+        self.topology.open_ties(self.grid, self.end, self.rungs, self.play.steward.help_hops)
     }
 
     /// Lowest and highest set-point of a unit at its area's rung, in pu; equal when given.
@@ -75,10 +74,7 @@ impl Setting<'_> {
             return given(self.end.unit_base_mw[unit]);
         }
         if self.rungs[area] <= 1 {
-            (
-                self.pu(u.min_mw + u.reserve_down_mw),
-                self.pu(u.max_mw - u.reserve_up_mw),
-            )
+            (self.pu(u.min_mw + u.reserve_down_mw), self.pu(u.max_mw - u.reserve_up_mw))
         } else {
             (self.pu(u.emergency_min_mw), self.pu(u.emergency_max_mw))
         }

@@ -30,12 +30,7 @@ fn dispatches_by_cost_at_keep() {
     assert!((judgement.optimum_cost.unwrap() - 0.06).abs() < 1e-6);
     assert!((judgement.cost - 0.06).abs() < 1e-9);
     assert_eq!(judgement.least_rung, [0, 0]);
-    assert_eq!(
-        judgement.outcome,
-        Outcome::Kept,
-        "{:?}",
-        judgement.broken_by
-    );
+    assert_eq!(judgement.outcome, Outcome::Kept, "{:?}", judgement.broken_by);
 }
 
 #[test]
@@ -45,11 +40,7 @@ fn breaks_on_a_dispatch_that_costs_too_much() {
     sample::set_units(&grid, &mut run, &[120.0, 120.0, 100.0]);
     let judgement = judge(&grid, &play, &run);
     assert_eq!(judgement.outcome, Outcome::Broken);
-    assert!(
-        judgement.broken_by[0].contains("set-points cost 0.0800"),
-        "{:?}",
-        judgement.broken_by
-    );
+    assert!(judgement.broken_by[0].contains("set-points cost 0.0800"), "{:?}", judgement.broken_by);
 }
 
 /// Line A1-A2 carries 100 MW at base and is rated 110: A1 may only add 10 of the 40.
@@ -62,12 +53,7 @@ fn a_full_line_moves_the_optimum() {
     let judgement = judge(&grid, &play, &run);
     // 1/2 * 1 * 0.1^2 + 1/2 * 3 * 0.3^2
     assert!((judgement.optimum_cost.unwrap() - 0.14).abs() < 1e-5);
-    assert_eq!(
-        judgement.outcome,
-        Outcome::Kept,
-        "{:?}",
-        judgement.broken_by
-    );
+    assert_eq!(judgement.outcome, Outcome::Kept, "{:?}", judgement.broken_by);
 }
 
 #[test]
@@ -78,10 +64,7 @@ fn names_the_line_above_its_rating() {
     sample::set_units(&grid, &mut run, &[130.0, 110.0, 100.0]);
     let judgement = judge(&grid, &play, &run);
     assert!(
-        judgement
-            .broken_by
-            .iter()
-            .any(|s| s.contains("Line A1-A2 carries 130.00 MW, 118.2 %")),
+        judgement.broken_by.iter().any(|s| s.contains("Line A1-A2 carries 130.00 MW, 118.2 %")),
         "{:?}",
         judgement.broken_by
     );
@@ -99,16 +82,8 @@ fn an_area_too_short_for_keep_leans() {
     let judgement = judge(&grid, &play, &run);
     // Units 2 * 0.16/2 ... A1: 1/2*1*.4^2, A2: 1/2*3*.4^2, B2: 1/2*2*.2^2; tie 2*(3*.2 + .025*.04)
     let by_hand = 0.08 + 0.24 + 0.04 + 2.0 * (0.6 + 0.001);
-    assert!(
-        (judgement.optimum_cost.unwrap() - by_hand).abs() < 1e-5,
-        "{judgement:?}"
-    );
-    assert_eq!(
-        judgement.outcome,
-        Outcome::Kept,
-        "{:?}",
-        judgement.broken_by
-    );
+    assert!((judgement.optimum_cost.unwrap() - by_hand).abs() < 1e-5, "{judgement:?}");
+    assert_eq!(judgement.outcome, Outcome::Kept, "{:?}", judgement.broken_by);
 }
 
 /// With a tie band of 5 MW, help is not enough; the emergency range of 150 each plus 5 is.
@@ -132,24 +107,13 @@ fn sheds_exactly_what_is_short() {
     sample::set_units(&grid, &mut run, &[150.0, 150.0, 105.0]);
     let judgement = judge(&grid, &play, &run);
     assert_eq!(judgement.least_rung, [3, 0]);
-    assert!(
-        (judgement.least_shed_mw - 45.0).abs() < 1e-3,
-        "{judgement:?}"
-    );
-    assert_eq!(
-        judgement.outcome,
-        Outcome::Kept,
-        "{:?}",
-        judgement.broken_by
-    );
+    assert!((judgement.least_shed_mw - 45.0).abs() < 1e-3, "{judgement:?}");
+    assert_eq!(judgement.outcome, Outcome::Kept, "{:?}", judgement.broken_by);
     run.end.feeder_shed_mw[0] = 50.0;
     sample::set_units(&grid, &mut run, &[150.0, 145.0, 105.0]);
     let judgement = judge(&grid, &play, &run);
     assert!(
-        judgement
-            .broken_by
-            .iter()
-            .any(|s| s.contains("sheds 50.00 MW, the least is 45.00 MW")),
+        judgement.broken_by.iter().any(|s| s.contains("sheds 50.00 MW, the least is 45.00 MW")),
         "{:?}",
         judgement.broken_by
     );
@@ -226,12 +190,7 @@ fn a_baseline_is_not_held_against_rungs_or_cost() {
     run.end.rung = vec![2, 2];
     sample::set_units(&grid, &mut run, &[150.0, 50.0, 100.0]);
     let judgement = judge(&grid, &play, &run);
-    assert_eq!(
-        judgement.outcome,
-        Outcome::Kept,
-        "{:?}",
-        judgement.broken_by
-    );
+    assert_eq!(judgement.outcome, Outcome::Kept, "{:?}", judgement.broken_by);
     assert_eq!(judgement.optimum_cost, None);
     assert!(judgement.cost > 0.0);
 }
@@ -244,11 +203,7 @@ fn a_dead_steward_leaves_its_area_without_reference_and_the_other_judged() {
     sample::set_units(&grid, &mut run, &[130.0, 110.0, 100.0]);
     run.end.rung[0] = 1;
     let judgement = judge(&grid, &play, &run);
-    assert!(
-        judgement.not_judged[0].contains("Brack"),
-        "{:?}",
-        judgement.not_judged
-    );
+    assert!(judgement.not_judged[0].contains("Brack"), "{:?}", judgement.not_judged);
     assert!(
         judgement
             .broken_by
@@ -270,35 +225,16 @@ fn a_cut_area_is_not_judged() {
     run.end.island_freq_dev_hz = vec![0.0, 0.0];
     run.end.island_can_regulate = vec![true, false];
     let judgement = judge(&grid, &play, &run);
-    assert!(
-        judgement.not_judged[0].contains("Ash: it was cut"),
-        "{:?}",
-        judgement.not_judged
-    );
-    assert!(
-        !judgement
-            .facts
-            .iter()
-            .any(|f| f.name == "rung" && f.where_ == "Ash")
-    );
-    assert!(
-        judgement
-            .facts
-            .iter()
-            .any(|f| f.name == "rung" && f.where_ == "Brack")
-    );
+    assert!(judgement.not_judged[0].contains("Ash: it was cut"), "{:?}", judgement.not_judged);
+    assert!(!judgement.facts.iter().any(|f| f.name == "rung" && f.where_ == "Ash"));
+    assert!(judgement.facts.iter().any(|f| f.name == "rung" && f.where_ == "Brack"));
 }
 
 /// Three areas in a ring: every tie at schedule needs the mid-tie angles, not only the exports.
 #[test]
 fn a_ring_of_areas_can_keep_its_schedule() {
     let (grid, play, mut run) = sample::ring();
-    assert_eq!(
-        judge(&grid, &play, &run).outcome,
-        Outcome::Kept,
-        "{:?}",
-        judge(&grid, &play, &run)
-    );
+    assert_eq!(judge(&grid, &play, &run).outcome, Outcome::Kept, "{:?}", judge(&grid, &play, &run));
     // +10 MW at the second bus of the first area. The two ties of that area sit on its two
     // buses; with the unit on the first bus only, the angle between them cannot be held.
     sample::add_load(&mut run, 1, 10.0);
@@ -333,11 +269,7 @@ fn a_dark_bus_is_left_out_and_the_rest_judged() {
     run.end.unit_setpoint_mw[2] = 0.0;
     let judgement = judge(&grid, &play, &run);
     assert_eq!(judgement.outcome, Outcome::Kept, "{judgement:?}");
-    assert!(
-        judgement.not_judged.is_empty(),
-        "{:?}",
-        judgement.not_judged
-    );
+    assert!(judgement.not_judged.is_empty(), "{:?}", judgement.not_judged);
     assert_eq!(judgement.least_rung, [0, 0]);
 }
 
@@ -365,12 +297,7 @@ fn a_fixed_unit_stays_at_its_base_point() {
     let judgement = judge(&grid, &play, &run);
     // 1/2 * 3 * 0.4^2
     assert!((judgement.optimum_cost.unwrap() - 0.24).abs() < 1e-6);
-    assert_eq!(
-        judgement.outcome,
-        Outcome::Kept,
-        "{:?}",
-        judgement.broken_by
-    );
+    assert_eq!(judgement.outcome, Outcome::Kept, "{:?}", judgement.broken_by);
 }
 
 /// The ring again, with help at `lean`: the optimum's cost is the recording's own when the
@@ -395,18 +322,9 @@ fn the_cost_of_an_optimal_run_is_the_optimum() {
     sample::set_units(&grid, &mut run, &optimum_mw);
     run.end.agreed_mw.clone_from(&run.end.line_flow_mw);
     let judgement = judge(&grid, &play, &run);
-    assert!(
-        (judgement.cost - best).abs() < 1e-6,
-        "{} {best}",
-        judgement.cost
-    );
+    assert!((judgement.cost - best).abs() < 1e-6, "{} {best}", judgement.cost);
     assert_eq!(judgement.least_rung, [1, 0, 0]);
-    assert_eq!(
-        judgement.outcome,
-        Outcome::Kept,
-        "{:?}",
-        judgement.broken_by
-    );
+    assert_eq!(judgement.outcome, Outcome::Kept, "{:?}", judgement.broken_by);
     // Any other dispatch costs more.
     for (a, b) in [(0, 1), (1, 2), (2, 0)] {
         let mut other = optimum_mw.clone();

@@ -150,15 +150,9 @@ impl Topology {
         let mut out = Vec::new();
         for (a, area) in grid.areas.iter().enumerate() {
             if self.first_bus[a].is_none() {
-                out.push(format!(
-                    "No reference for {}: it has no live bus.",
-                    area.name
-                ));
+                out.push(format!("No reference for {}: it has no live bus.", area.name));
             } else if self.cut[a] {
-                out.push(format!(
-                    "No reference for {}: it was cut in pieces.",
-                    area.name
-                ));
+                out.push(format!("No reference for {}: it was cut in pieces.", area.name));
             }
             if !self.alive[a] && recording.scheme == Scheme::Steward {
                 out.push(format!(
@@ -176,10 +170,7 @@ impl Topology {
             {
                 let (a, b) = ends(grid, line);
                 let (keep, drop) = (self.angle_group[a], self.angle_group[b]);
-                self.angle_group
-                    .iter_mut()
-                    .filter(|g| **g == drop)
-                    .for_each(|g| *g = keep);
+                self.angle_group.iter_mut().filter(|g| **g == drop).for_each(|g| *g = keep);
             }
         }
     }
@@ -190,10 +181,7 @@ fn labels(bus_count: usize, joins: impl Iterator<Item = (usize, usize)>) -> Vec<
     let mut label: Vec<usize> = (0..bus_count).collect();
     for (from, to) in joins {
         let (keep, drop) = (label[from].min(label[to]), label[from].max(label[to]));
-        label
-            .iter_mut()
-            .filter(|l| **l == drop)
-            .for_each(|l| *l = keep);
+        label.iter_mut().filter(|l| **l == drop).for_each(|l| *l = keep);
     }
     label
 }
@@ -201,10 +189,7 @@ fn labels(bus_count: usize, joins: impl Iterator<Item = (usize, usize)>) -> Vec<
 /// Piece of each bus within its own area, over closed lines.
 fn pieces(grid: &Grid, end: &FinalState) -> Vec<usize> {
     let inside = (0..grid.lines.len()).filter(|&l| !is_tie(grid, l) && end.line_closed[l]);
-    labels(
-        grid.buses.len(),
-        inside.map(|l| (grid.lines[l].from, grid.lines[l].to)),
-    )
+    labels(grid.buses.len(), inside.map(|l| (grid.lines[l].from, grid.lines[l].to)))
 }
 
 /// Piece each steward keeps: most generating capacity, then most buses, then file order.
@@ -236,10 +221,8 @@ fn main_pieces(grid: &Grid, end: &FinalState, piece: &[usize]) -> Vec<Option<usi
 
 fn roles(grid: &Grid, end: &FinalState, piece: &[usize], main: &[Option<usize>]) -> Vec<BusRole> {
     let is_main = |b: usize| main[grid.buses[b].area] == Some(piece[b]);
-    let with_main: Vec<usize> = (0..grid.buses.len())
-        .filter(|&b| is_main(b))
-        .filter_map(|b| end.bus_island[b])
-        .collect();
+    let with_main: Vec<usize> =
+        (0..grid.buses.len()).filter(|&b| is_main(b)).filter_map(|b| end.bus_island[b]).collect();
     (0..grid.buses.len())
         .map(|b| match end.bus_island[b] {
             Some(_) if is_main(b) => BusRole::Main,
@@ -251,9 +234,8 @@ fn roles(grid: &Grid, end: &FinalState, piece: &[usize], main: &[Option<usize>])
 
 /// A tie is meshed when its two areas stay joined without it.
 fn meshed_ties(grid: &Grid) -> Vec<bool> {
-    let ties: Vec<usize> = (0..grid.lines.len())
-        .filter(|&l| is_tie(grid, l) && grid.lines[l].closed)
-        .collect();
+    let ties: Vec<usize> =
+        (0..grid.lines.len()).filter(|&l| is_tie(grid, l) && grid.lines[l].closed).collect();
     let mut meshed = vec![false; grid.lines.len()];
     for &tie in &ties {
         let others = ties.iter().filter(|&&l| l != tie).map(|&l| ends(grid, l));
@@ -290,10 +272,7 @@ fn base_mid_angles(grid: &Grid) -> Vec<f64> {
         matrix[(b, b)] = 1.0;
         injection[b] = 0.0;
     }
-    let angle = matrix
-        .lu()
-        .solve(&injection)
-        .unwrap_or_else(|| DVector::zeros(n));
+    let angle = matrix.lu().solve(&injection).unwrap_or_else(|| DVector::zeros(n));
     (0..grid.lines.len())
         .map(|l| match is_tie(grid, l) {
             true => 0.5 * (angle[grid.lines[l].from] + angle[grid.lines[l].to]),

@@ -13,11 +13,7 @@ pub struct Counted<L> {
 impl<L> Counted<L> {
     /// Count the frames of `inner`.
     pub const fn new(inner: L) -> Self {
-        Self {
-            inner,
-            sent: 0,
-            delivered: 0,
-        }
+        Self { inner, sent: 0, delivered: 0 }
     }
 
     /// The link inside, say to announce an outage.
@@ -41,10 +37,6 @@ impl<L: Link> Link for Counted<L> {
     }
 
     fn tally(&self) -> Tally {
-        Tally {
-            sent: self.sent,
-            delivered: self.delivered,
-            ..self.inner.tally()
-        }
+        Tally { sent: self.sent, delivered: self.delivered, ..self.inner.tally() }
     }
 }

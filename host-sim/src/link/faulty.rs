@@ -96,12 +96,7 @@ impl<L> Faulty<L> {
         {
             self.tally.corrupted += 1;
         }
-        self.held.push(Held {
-            due_tick,
-            overtaken,
-            order: self.order,
-            bytes,
-        });
+        self.held.push(Held { due_tick, overtaken, order: self.order, bytes });
         self.order += 1;
     }
 }

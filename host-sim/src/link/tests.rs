@@ -21,10 +21,7 @@ fn carried(link: &mut impl Link, ticks: u32) -> Vec<(u32, Vec<u32>)> {
 }
 
 fn frames(carried: &[(u32, Vec<u32>)]) -> Vec<u32> {
-    carried
-        .iter()
-        .flat_map(|(_, heard)| heard.clone())
-        .collect()
+    carried.iter().flat_map(|(_, heard)| heard.clone()).collect()
 }
 
 fn link(faults: Links) -> Counted<Faulty<Direct>> {
@@ -40,11 +37,7 @@ fn direct_hands_over_in_the_same_tick_or_at_the_next_asking() {
     link.receive(1, &mut |wire| heard.push(wire.to_vec()));
     assert_eq!(heard, [b"a".to_vec(), b"bc".to_vec()]);
     link.receive(1, &mut |_| panic!("nothing is left"));
-    assert!(
-        carried(&mut link, 9)
-            .iter()
-            .all(|(tick, heard)| heard == &[*tick])
-    );
+    assert!(carried(&mut link, 9).iter().all(|(tick, heard)| heard == &[*tick]));
 }
 
 #[test]
@@ -53,19 +46,13 @@ fn faultless_link_passes_everything_at_once_and_in_order() {
     let all = carried(&mut link, 200);
     assert!(all.iter().all(|(tick, heard)| heard == &[*tick]));
     let tally = link.tally();
-    assert_eq!(
-        (tally.sent, tally.delivered, tally.in_flight()),
-        (200, 200, 0)
-    );
+    assert_eq!((tally.sent, tally.delivered, tally.in_flight()), (200, 200, 0));
     assert_eq!((tally.lost, tally.duplicated, tally.corrupted), (0, 0, 0));
 }
 
 #[test]
 fn delay_alone_is_exact_and_keeps_the_order() {
-    let mut link = link(Links {
-        delay_ticks: 7,
-        ..FAULTLESS
-    });
+    let mut link = link(Links { delay_ticks: 7, ..FAULTLESS });
     for (tick, heard) in carried(&mut link, 100) {
         let expected: Vec<u32> = tick.checked_sub(7).into_iter().collect();
         assert_eq!(heard, expected, "tick {tick}");
@@ -75,11 +62,7 @@ fn delay_alone_is_exact_and_keeps_the_order() {
 
 #[test]
 fn jitter_stays_in_its_range_and_lets_frames_overtake() {
-    let mut link = link(Links {
-        delay_ticks: 2,
-        jitter_ticks: 5,
-        ..FAULTLESS
-    });
+    let mut link = link(Links { delay_ticks: 2, jitter_ticks: 5, ..FAULTLESS });
     let all = carried(&mut link, 2000);
     let mut delays = [0; 8];
     for (tick, heard) in &all {
@@ -89,19 +72,13 @@ fn jitter_stays_in_its_range_and_lets_frames_overtake() {
     }
     assert_eq!(delays[..2], [0, 0]);
     // Six equal shares of some 2000 frames: 333 each, standard deviation 17.
-    assert!(
-        delays[2..].iter().all(|&count| (250..420).contains(&count)),
-        "{delays:?}"
-    );
+    assert!(delays[2..].iter().all(|&count| (250..420).contains(&count)), "{delays:?}");
     assert!(!frames(&all).is_sorted());
 }
 
 #[test]
 fn overtaken_frames_come_one_tick_later_and_last() {
-    let mut link = link(Links {
-        reorder: 0.2,
-        ..FAULTLESS
-    });
+    let mut link = link(Links { reorder: 0.2, ..FAULTLESS });
     let all = carried(&mut link, 1000);
     let late: usize = all
         .iter()
@@ -118,11 +95,7 @@ fn overtaken_frames_come_one_tick_later_and_last() {
 
 #[test]
 fn loses_and_copies_about_as_many_as_told() {
-    let mut link = link(Links {
-        loss: 0.1,
-        duplicate: 0.3,
-        ..FAULTLESS
-    });
+    let mut link = link(Links { loss: 0.1, duplicate: 0.3, ..FAULTLESS });
     carried(&mut link, 10_000);
     let tally = link.tally();
     // Standard deviations 30 and 43 frames.
@@ -133,10 +106,7 @@ fn loses_and_copies_about_as_many_as_told() {
 
 #[test]
 fn chance_one_is_always_and_chance_zero_never() {
-    let mut link = link(Links {
-        loss: 1.0,
-        ..FAULTLESS
-    });
+    let mut link = link(Links { loss: 1.0, ..FAULTLESS });
     assert_eq!(frames(&carried(&mut link, 500)), []);
     assert!(happens(1.0, u32::MAX) && happens(f64::MIN_POSITIVE, 0));
     assert!(!happens(0.0, 0));
@@ -161,11 +131,7 @@ fn same_seed_and_name_give_the_same_fate_and_others_another() {
 #[test]
 fn another_chance_leaves_the_other_fates_as_they_were() {
     let lossy = |duplicate| {
-        let mut link = link(Links {
-            loss: 0.3,
-            duplicate,
-            ..FAULTLESS
-        });
+        let mut link = link(Links { loss: 0.3, duplicate, ..FAULTLESS });
         let mut heard = frames(&carried(&mut link, 300));
         heard.dedup();
         heard
@@ -175,10 +141,7 @@ fn another_chance_leaves_the_other_fates_as_they_were() {
 
 #[test]
 fn outage_passes_nothing_and_ends() {
-    let mut link = link(Links {
-        delay_ticks: 3,
-        ..FAULTLESS
-    });
+    let mut link = link(Links { delay_ticks: 3, ..FAULTLESS });
     link.inner_mut().silence(10..20);
     let all = carried(&mut link, 40);
     assert!(all[10..20].iter().all(|(_, heard)| heard.is_empty()));
@@ -191,21 +154,11 @@ fn outage_passes_nothing_and_ends() {
 #[test]
 fn hurt_frames_are_refused_and_counted_and_the_others_pass() {
     let key = Key::new(&REHEARSAL_KEY);
-    let mut link = link(Links {
-        corrupt: 0.25,
-        ..FAULTLESS
-    });
+    let mut link = link(Links { corrupt: 0.25, ..FAULTLESS });
     let mut decoder = FrameDecoder::<WIRE_MAX>::new();
     let (mut opened, mut arrived) = (Vec::new(), 0);
     for tick in 0..1000 {
-        let header = Header {
-            id: 0,
-            from: 1,
-            to: 2,
-            boot_id: 9,
-            peer_boot_id: 8,
-            counter: tick,
-        };
+        let header = Header { id: 0, from: 1, to: 2, boot_id: 9, peer_boot_id: 8, counter: tick };
         let (mut raw, mut wire) = ([0; 64], [0; 64]);
         let said = Message::Stop(Stop { tick });
         let sent = frame::seal(&header, &said, &key, &mut raw, &mut wire).expect("it fits");
@@ -214,12 +167,7 @@ fn hurt_frames_are_refused_and_counted_and_the_others_pass() {
             arrived += 1;
             while let Some(raw) = decoder.feed(&mut wire) {
                 if let Ok((header, message)) = frame::open(raw, &key) {
-                    assert_eq!(
-                        message,
-                        Message::Stop(Stop {
-                            tick: header.counter
-                        })
-                    );
+                    assert_eq!(message, Message::Stop(Stop { tick: header.counter }));
                     opened.push(header.counter);
                 }
             }
@@ -238,10 +186,7 @@ fn hurt_frames_are_refused_and_counted_and_the_others_pass() {
 #[test]
 fn trace_shows_what_was_sent_and_what_arrived() {
     let mut seen = Vec::new();
-    let faults = Links {
-        delay_ticks: 1,
-        ..FAULTLESS
-    };
+    let faults = Links { delay_ticks: 1, ..FAULTLESS };
     let inner = Faulty::new(Direct::default(), &faults, stream(1, "x"));
     let mut link = Traced::new(inner, |passing: Passing<'_>| {
         seen.push(match passing {

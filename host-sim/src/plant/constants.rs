@@ -50,11 +50,8 @@ impl UnitConstants {
         let inertia_of = |inertia_s: f64| 2.0 * inertia_s * unit.rating_mva / omega;
         let gain = 1.0 + unit.gain_error;
         // A unit that delivers nothing whatever it is told rests at reference 0.
-        let base_reference_mw = if gain == 0.0 {
-            0.0
-        } else {
-            (unit.base_mw - unit.bias_mw) / gain
-        };
+        let base_reference_mw =
+            if gain == 0.0 { 0.0 } else { (unit.base_mw - unit.bias_mw) / gain };
         Self {
             name: unit.name.clone(),
             bus: unit.bus,

@@ -48,10 +48,7 @@ pub struct Square {
 impl Square {
     /// A matrix of zeros.
     pub fn zeros(size: usize) -> Self {
-        Self {
-            size,
-            data: vec![0.0; size * size],
-        }
+        Self { size, data: vec![0.0; size * size] }
     }
 
     /// Entry for reading and writing.

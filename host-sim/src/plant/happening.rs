@@ -63,11 +63,7 @@ impl Plant {
                 // Written so that a distance that is no number is refused too.
                 let in_step = freq_hz <= SYNC_FREQ_HZ && angle_deg <= SYNC_ANGLE_DEG;
                 if !in_step {
-                    return Err(Refused::OutOfStep {
-                        line: name,
-                        freq_hz,
-                        angle_deg,
-                    });
+                    return Err(Refused::OutOfStep { line: name, freq_hz, angle_deg });
                 }
                 format!("line {name} closes, {freq_hz:.3} Hz and {angle_deg:.1} deg apart")
             }
@@ -134,20 +130,15 @@ impl Plant {
         let name = &self.constants.buses[bus].name;
         let load_mw = self.switches.load_mw[bus] + mw;
         if !load_mw.is_finite() {
-            return Err(Refused::NotFinite {
-                bus: name.clone(),
-                mw,
-            });
+            return Err(Refused::NotFinite { bus: name.clone(), mw });
         }
         let way = if mw < 0.0 { "falls" } else { "rises" };
         let dark = match self.propagator.islands.of_bus[bus] {
             Some(_) => "",
             None => " once it is live again",
         };
-        let told = format!(
-            "load at bus {name} {way} by {:.1} MW to {load_mw:.1} MW{dark}",
-            mw.abs()
-        );
+        let told =
+            format!("load at bus {name} {way} by {:.1} MW to {load_mw:.1} MW{dark}", mw.abs());
         self.change(told, |plant| plant.switches.load_mw[bus] = load_mw)
     }
 
@@ -213,8 +204,7 @@ impl Plant {
         }
         self.follow_islands(&before.propagator.islands, islands);
         self.load_motion();
-        self.motion
-            .turn_back(&self.propagator, &mut self.island_angle_rad);
+        self.motion.turn_back(&self.propagator, &mut self.island_angle_rad);
         self.evaluate();
         self.show_event();
         let mut sentences = vec![told];
@@ -230,17 +220,10 @@ impl Plant {
                 angle_rad[island].get_or_insert(self.island_angle_rad[was]);
             }
         }
-        self.island_angle_rad = angle_rad
-            .into_iter()
-            .map(Option::unwrap_or_default)
-            .collect();
+        self.island_angle_rad = angle_rad.into_iter().map(Option::unwrap_or_default).collect();
     }
 }
 
 fn check_index(what: &'static str, index: usize, count: usize) -> Result<(), Refused> {
-    if index < count {
-        Ok(())
-    } else {
-        Err(Refused::Unknown { what, index })
-    }
+    if index < count { Ok(()) } else { Err(Refused::Unknown { what, index }) }
 }

@@ -126,16 +126,11 @@ fn islands_close_again_when_in_step_and_meet_the_old_flows() {
     for second in 0..300 {
         match plant.apply(&close(1)) {
             Ok(told) => {
-                assert!(
-                    told[1].ends_with("are joined with the rest again"),
-                    "{told:?}"
-                );
+                assert!(told[1].ends_with("are joined with the rest again"), "{told:?}");
                 closed_at = Some(second);
                 break;
             }
-            Err(Refused::OutOfStep {
-                freq_hz, angle_deg, ..
-            }) => {
+            Err(Refused::OutOfStep { freq_hz, angle_deg, .. }) => {
                 assert!(freq_hz < 0.1 && angle_deg > 30.0 && angle_deg <= 180.0);
             }
             Err(other) => panic!("{other}"),
@@ -218,10 +213,7 @@ fn losing_the_last_grid_forming_unit_darkens_the_island() {
     let mut plant = plant();
     plant.apply(&trip(1)).unwrap();
     let told = plant.apply(&Happening::UnitTrip { unit: 1 }).unwrap();
-    assert!(
-        told.contains(&"bus B4 is dark: 46.0 MW lost".to_string()),
-        "{told:?}"
-    );
+    assert!(told.contains(&"bus B4 is dark: 46.0 MW lost".to_string()), "{told:?}");
     assert_eq!(plant.island_count(), 1);
     // In step with nothing: the dark side can always be taken on.
     plant.apply(&close(1)).unwrap();
@@ -233,37 +225,19 @@ fn losing_the_last_grid_forming_unit_darkens_the_island() {
 #[test]
 fn events_that_make_no_sense_are_refused_and_change_nothing() {
     let mut plant = plant();
-    assert_eq!(
-        plant.apply(&Happening::StewardDies { area: 0 }),
-        Err(Refused::NotForThePlant)
-    );
-    assert!(matches!(
-        plant.apply(&trip(9)),
-        Err(Refused::Unknown {
-            what: "line",
-            index: 9
-        })
-    ));
-    assert!(matches!(
-        plant.apply(&close(0)),
-        Err(Refused::AlreadyClosed { .. })
-    ));
+    assert_eq!(plant.apply(&Happening::StewardDies { area: 0 }), Err(Refused::NotForThePlant));
+    assert!(matches!(plant.apply(&trip(9)), Err(Refused::Unknown { what: "line", index: 9 })));
+    assert!(matches!(plant.apply(&close(0)), Err(Refused::AlreadyClosed { .. })));
     assert!(matches!(
         plant.apply(&Happening::UnitReturn { unit: 0 }),
         Err(Refused::AlreadyIn { .. })
     ));
     assert!(matches!(
-        plant.apply(&Happening::LoadStep {
-            bus: 0,
-            mw: f64::NAN
-        }),
+        plant.apply(&Happening::LoadStep { bus: 0, mw: f64::NAN }),
         Err(Refused::NotFinite { .. })
     ));
     plant.apply(&trip(0)).unwrap();
-    assert!(matches!(
-        plant.apply(&trip(0)),
-        Err(Refused::AlreadyOpen { .. })
-    ));
+    assert!(matches!(plant.apply(&trip(0)), Err(Refused::AlreadyOpen { .. })));
 }
 
 #[test]
@@ -352,10 +326,7 @@ fn a_thousand_random_events_leave_the_plant_whole() {
             1..4 => close(draw(grid.lines.len())),
             4 => Happening::UnitTrip { unit: draw(12) },
             5 | 6 => Happening::UnitReturn { unit: draw(12) },
-            7 => Happening::LoadStep {
-                bus: draw(39),
-                mw: draw(41) as f64 - 20.0,
-            },
+            7 => Happening::LoadStep { bus: draw(39), mw: draw(41) as f64 - 20.0 },
             _ => {
                 plant.set_feeder_shed_mw(0, draw(300) as f64);
                 plant.set_unit_setpoint_mw(draw(12), draw(700) as f64);

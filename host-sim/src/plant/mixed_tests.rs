@@ -15,13 +15,9 @@ fn mixed() -> Grid {
         grid.buses[bus].damping_mw_per_hz = damping_mw_per_hz;
         grid.buses[bus].load_damping = 1.5;
     }
-    for (from, to, reactance_pu) in [
-        (0, 1, 0.3),
-        (1, 2, 0.4),
-        (2, 3, 0.2),
-        (3, 0, 0.5),
-        (0, 1, 0.6),
-    ] {
+    for (from, to, reactance_pu) in
+        [(0, 1, 0.3), (1, 2, 0.4), (2, 3, 0.2), (3, 0, 0.5), (0, 1, 0.6)]
+    {
         add_line(&mut grid, from, to, reactance_pu);
     }
     // (bus, rating, base, inertia, droop, lag, ramp)
@@ -51,8 +47,7 @@ fn derivative(grid: &Grid, state: &State, load_mw: &[f64; 4], reference_mw: &[f6
     let angle = &state[..4];
     let gain = |unit: usize| {
         let unit = &grid.units[unit];
-        unit.droop_percent
-            .map_or(0.0, |r| unit.rating_mva / (r / 100.0 * 50.0 * TAU))
+        unit.droop_percent.map_or(0.0, |r| unit.rating_mva / (r / 100.0 * 50.0 * TAU))
     };
     let mut net = [0.0; 4];
     for bus in 0..4 {
@@ -73,12 +68,7 @@ fn derivative(grid: &Grid, state: &State, load_mw: &[f64; 4], reference_mw: &[f6
     };
     let inertia =
         |unit: usize| 2.0 * grid.units[unit].inertia_s * grid.units[unit].rating_mva / (50.0 * TAU);
-    let speed = [
-        state[4],
-        net[1] / (damping(1) + gain(1)),
-        state[5],
-        net[3] / damping(3),
-    ];
+    let speed = [state[4], net[1] / (damping(1) + gain(1)), state[5], net[3] / damping(3)];
     let lag = |unit: usize, output: f64| {
         (reference_mw[unit] - gain(unit) * speed[unit] - output) / grid.units[unit].lag_s
     };
@@ -127,21 +117,12 @@ fn agrees_with_runge_kutta_on_every_kind_of_bus_and_unit() {
     assert_eq!(plant.propagator.size(), 8);
     let angle = plant.bus_angle_rad();
     let mut state: State = [angle[0], angle[1], angle[2], angle[3], 0.0, 0.0, 60.0, 5.0];
-    plant
-        .apply(&Happening::LoadStep { bus: 1, mw: 8.0 })
-        .unwrap();
+    plant.apply(&Happening::LoadStep { bus: 1, mw: 8.0 }).unwrap();
     let load_mw = [20.0, 58.0, 10.0, 40.0];
     for (unit, mw) in [(0, 66.0), (1, 7.0), (2, 47.0), (3, 4.0)] {
         plant.set_unit_setpoint_mw(unit, mw);
     }
-    let reference_mw = |t: f64| {
-        [
-            60.0 + (3.0 * t).min(6.0),
-            7.0,
-            50.0 - (2.0 * t).min(3.0),
-            4.0,
-        ]
-    };
+    let reference_mw = |t: f64| [60.0 + (3.0 * t).min(6.0), 7.0, 50.0 - (2.0 * t).min(3.0), 4.0];
     let fine_steps = 100;
     for step in 0..400 {
         for fine in 0..fine_steps {
@@ -177,9 +158,7 @@ fn a_bus_without_damping_is_the_limit_of_one_with_little() {
             grid.units[unit].lag_s = 0.0;
         }
         let mut plant = Plant::new(&grid, 0.01).unwrap();
-        plant
-            .apply(&Happening::LoadStep { bus: 1, mw: 8.0 })
-            .unwrap();
+        plant.apply(&Happening::LoadStep { bus: 1, mw: 8.0 }).unwrap();
         for _ in 0..500 {
             plant.step();
         }
@@ -207,16 +186,12 @@ fn meets_governor_limits_alike_at_every_step() {
         grid.units[1].emergency_max_mw = 6.0;
         grid.units[0].emergency_max_mw = 63.0;
         let mut plant = Plant::new(&grid, step_s).unwrap();
-        plant
-            .apply(&Happening::LoadStep { bus: 1, mw: 8.0 })
-            .unwrap();
+        plant.apply(&Happening::LoadStep { bus: 1, mw: 8.0 }).unwrap();
         let mut highest_mw = [0.0_f64; 2];
         let steps = (6.0 / step_s).round() as usize;
         for step in 0..2 * steps {
             if step == steps {
-                plant
-                    .apply(&Happening::LoadStep { bus: 1, mw: -8.0 })
-                    .unwrap();
+                plant.apply(&Happening::LoadStep { bus: 1, mw: -8.0 }).unwrap();
             }
             plant.step();
             for (unit, highest_mw) in highest_mw.iter_mut().enumerate() {

@@ -61,8 +61,7 @@ impl Motion {
         let angles = propagator.kept.iter().map(|&bus| self.angle_rad[bus]);
         self.state.extend(angles);
         let inertial = &propagator.kept[..propagator.inertial_count];
-        self.state
-            .extend(inertial.iter().map(|&bus| self.speed[bus]));
+        self.state.extend(inertial.iter().map(|&bus| self.speed[bus]));
         let outputs = propagator.lagged.iter().map(|&unit| self.output_mw[unit]);
         self.state.extend(outputs);
         self.derivative = vec![0.0; self.state.len()];
@@ -145,11 +144,7 @@ impl Motion {
             let column = &propagator.injection_map[at * size..(at + 1) * size];
             add_scaled(&mut self.algebraic, column, self.output_mw[unit]);
         }
-        add_product(
-            &mut self.algebraic,
-            &propagator.angle_map,
-            &self.state[..kept],
-        );
+        add_product(&mut self.algebraic, &propagator.angle_map, &self.state[..kept]);
         for (&bus, &angle) in propagator.algebraic.iter().zip(&self.algebraic) {
             self.angle_rad[bus] = angle;
         }
@@ -213,10 +208,8 @@ impl Motion {
     /// Only differences act, so nothing else changes; angles stay small and
     /// keep their digits however long an island runs off nominal frequency.
     pub fn turn_back(&mut self, propagator: &Propagator, island_angle_rad: &mut [f64]) {
-        for (island, (total, &at)) in island_angle_rad
-            .iter_mut()
-            .zip(&propagator.reference)
-            .enumerate()
+        for (island, (total, &at)) in
+            island_angle_rad.iter_mut().zip(&propagator.reference).enumerate()
         {
             let turn = self.state[at];
             *total = wrapped(*total + turn);

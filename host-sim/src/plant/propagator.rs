@@ -198,10 +198,7 @@ fn reference_positions(islands: &Islands, bus_inertia: &[f64], kept: &[usize]) -
         }
     }
     // Every live island has inertia, by the floor at least, so a kept bus.
-    reference
-        .into_iter()
-        .map(Option::unwrap_or_default)
-        .collect()
+    reference.into_iter().map(Option::unwrap_or_default).collect()
 }
 
 /// The network with its algebraic buses eliminated.
@@ -232,20 +229,12 @@ impl Reduced {
         let coupling = full.view((kept, 0), (algebraic, kept)).into_owned();
         let own = full.view((kept, kept), (algebraic, algebraic)).into_owned();
         if algebraic == 0 {
-            return Some(Self {
-                stiffness,
-                angle_map: coupling,
-                injection_map: own,
-            });
+            return Some(Self { stiffness, angle_map: coupling, injection_map: own });
         }
         let injection_map = own.lu().try_inverse()?;
         let angle_map = -(&injection_map * &coupling);
         stiffness += coupling.transpose() * &angle_map;
-        Some(Self {
-            stiffness,
-            angle_map,
-            injection_map,
-        })
+        Some(Self { stiffness, angle_map, injection_map })
     }
 }
 
@@ -259,10 +248,8 @@ struct Equations {
 impl Equations {
     fn new(constants: &Constants, propagator: &Propagator, network: &Reduced) -> Self {
         let size = propagator.size();
-        let mut equations = Self {
-            a: Square::zeros(size),
-            b: vec![0.0; size * constants.units.len()],
-        };
+        let mut equations =
+            Self { a: Square::zeros(size), b: vec![0.0; size * constants.units.len()] };
         equations.add_network(propagator, network);
         equations.add_injections(constants, propagator);
         equations.add_governors(constants, propagator);

@@ -38,11 +38,8 @@ impl Plant {
             Arc::new(Propagator::new(&constants, &switches).ok_or(PlantError::Singular)?);
         let angle_rad = rest_angles(grid, &constants, &switches, &islands)?;
         let drive = |data: &UnitConstants| data.gain * data.base_reference_mw + data.bias_mw;
-        let setpoint_mw: Vec<f64> = constants
-            .units
-            .iter()
-            .map(|data| data.base_reference_mw)
-            .collect();
+        let setpoint_mw: Vec<f64> =
+            constants.units.iter().map(|data| data.base_reference_mw).collect();
         let mut plant = Self {
             cache: vec![(switches.key(&constants), propagator.clone())],
             shown: Shown::new(grid),
@@ -63,9 +60,7 @@ impl Plant {
             propagator,
         };
         plant.load_motion();
-        plant
-            .motion
-            .turn_back(&plant.propagator, &mut plant.island_angle_rad);
+        plant.motion.turn_back(&plant.propagator, &mut plant.island_angle_rad);
         plant.island_angle_rad.fill(0.0);
         plant.evaluate();
         plant.show_event();
@@ -93,9 +88,7 @@ fn in_service(
     figure: impl Fn(&UnitConstants) -> f64,
 ) -> Vec<f64> {
     let units = constants.units.iter().zip(&switches.unit_in);
-    units
-        .map(|(data, &is_in)| if is_in { figure(data) } else { 0.0 })
-        .collect()
+    units.map(|(data, &is_in)| if is_in { figure(data) } else { 0.0 }).collect()
 }
 
 fn first_switches(grid: &Grid, constants: &Constants) -> Switches {
@@ -136,17 +129,10 @@ fn balance(
     }
     for island in 0..islands.count {
         let imbalance_mw = surplus_mw[island];
-        let allowed_mw = if load_mw[island] > 0.0 {
-            BALANCE_MW
-        } else {
-            1e-9
-        };
+        let allowed_mw = if load_mw[island] > 0.0 { BALANCE_MW } else { 1e-9 };
         if imbalance_mw.is_nan() || imbalance_mw.abs() > allowed_mw {
             let bus = lowest_bus[island].map_or("?", |bus: usize| &grid.buses[bus].name);
-            return Err(PlantError::Imbalance {
-                bus: bus.to_string(),
-                imbalance_mw,
-            });
+            return Err(PlantError::Imbalance { bus: bus.to_string(), imbalance_mw });
         }
     }
     for (bus, island) in islands.of_bus.iter().enumerate() {

@@ -16,17 +16,11 @@ impl Plant {
     /// more in the rare step in which a unit meets or leaves a limit.
     pub fn step(&mut self) {
         let ramping = self.start_ramps();
-        self.motion.advance(
-            &self.constants,
-            &self.propagator,
-            &self.drive_mw,
-            &self.ramp_mw,
-        );
+        self.motion.advance(&self.constants, &self.propagator, &self.drive_mw, &self.ramp_mw);
         if ramping {
             self.end_ramps();
         }
-        self.motion
-            .turn_back(&self.propagator, &mut self.island_angle_rad);
+        self.motion.turn_back(&self.propagator, &mut self.island_angle_rad);
         self.evaluate();
         self.steps += 1;
         self.count_energy();
@@ -152,8 +146,7 @@ impl Plant {
     }
 
     pub(super) fn evaluate(&mut self) {
-        self.motion
-            .evaluate(&self.constants, &self.propagator, &self.drive_mw);
+        self.motion.evaluate(&self.constants, &self.propagator, &self.drive_mw);
     }
 
     /// Show what a step changes.
@@ -162,9 +155,7 @@ impl Plant {
         for (shown, speed) in speeds {
             *shown = speed * (1.0 / std::f64::consts::TAU);
         }
-        self.shown
-            .unit_output_mw
-            .copy_from_slice(&self.motion.output_mw);
+        self.shown.unit_output_mw.copy_from_slice(&self.motion.output_mw);
     }
 
     /// Show what an event changes at once.
@@ -187,11 +178,7 @@ impl Plant {
                 *shown = self.motion.output_mw[unit];
             }
         }
-        let loads = self
-            .shown
-            .bus_load_mw
-            .iter_mut()
-            .zip(&self.switches.load_mw);
+        let loads = self.shown.bus_load_mw.iter_mut().zip(&self.switches.load_mw);
         for ((shown, load_mw), island) in loads.zip(island) {
             *shown = island.map_or(0.0, |_| *load_mw);
         }

@@ -72,16 +72,9 @@ fn splits_and_joins(before: &Plant, after: &Plant, sentences: &mut Vec<String>) 
 }
 
 fn names(plant: &Plant, buses: &[usize]) -> String {
-    let listed: Vec<&str> = buses
-        .iter()
-        .take(NAMES_MAX)
-        .map(|&bus| plant.constants.buses[bus].name.as_str())
-        .collect();
-    let (word, verb) = if buses.len() == 1 {
-        ("bus", "is")
-    } else {
-        ("buses", "are")
-    };
+    let listed: Vec<&str> =
+        buses.iter().take(NAMES_MAX).map(|&bus| plant.constants.buses[bus].name.as_str()).collect();
+    let (word, verb) = if buses.len() == 1 { ("bus", "is") } else { ("buses", "are") };
     match buses.len() - listed.len() {
         0 => format!("{word} {} {verb}", listed.join(", ")),
         more => format!("{word} {} and {more} more {verb}", listed.join(", ")),

@@ -138,10 +138,7 @@ fn ten_hours_off_nominal_lose_no_digits() {
     let mut plant = Plant::new(&grid, 0.02).unwrap();
     step_load(&mut plant, 19, 100.0);
     run(&mut plant, 300.0);
-    let (freq, flow) = (
-        plant.bus_freq_dev_hz().to_vec(),
-        plant.line_flow_mw().to_vec(),
-    );
+    let (freq, flow) = (plant.bus_freq_dev_hz().to_vec(), plant.line_flow_mw().to_vec());
     assert!(freq[0] < -0.03);
     run(&mut plant, 36_000.0);
     for (now, then) in plant.bus_freq_dev_hz().iter().zip(freq) {
@@ -179,11 +176,7 @@ fn a_lag_answers_a_jump_and_a_ramp_as_its_closed_form() {
     let mut plant = Plant::new(&grid, 0.02).unwrap();
     plant.set_unit_setpoint_mw(0, 70.0);
     run(&mut plant, 1.4);
-    assert_close(
-        plant.unit_output_mw()[0],
-        60.0 + 10.0 * (1.0 - (-2.0_f64).exp()),
-        1e-10,
-    );
+    assert_close(plant.unit_output_mw()[0], 60.0 + 10.0 * (1.0 - (-2.0_f64).exp()), 1e-10);
     grid.units[0].ramp_mw_per_s = 1.0;
     let mut plant = Plant::new(&grid, 0.02).unwrap();
     plant.set_unit_setpoint_mw(0, 90.0);
@@ -337,10 +330,7 @@ fn puts_a_small_residual_on_the_loads_and_refuses_a_large_one() {
         matches!(refused, PlantError::Imbalance { imbalance_mw, .. } if (imbalance_mw - 1.0).abs() < 1e-9)
     );
     for step_s in [0.0, -1.0, f64::NAN, f64::INFINITY] {
-        assert!(matches!(
-            Plant::new(&single(), step_s),
-            Err(PlantError::Step { .. })
-        ));
+        assert!(matches!(Plant::new(&single(), step_s), Err(PlantError::Step { .. })));
     }
 }
 

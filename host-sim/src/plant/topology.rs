@@ -63,10 +63,7 @@ impl Switches {
                 live_count += 1;
             }
         }
-        Islands {
-            of_bus: component.into_iter().map(|c| number[c]).collect(),
-            count: live_count,
-        }
+        Islands { of_bus: component.into_iter().map(|c| number[c]).collect(), count: live_count }
     }
 
     /// Inertia of each bus in MW s^2/rad, the floor for converter islands included.

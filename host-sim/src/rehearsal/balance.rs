@@ -29,9 +29,10 @@ pub struct Balance {
 impl Balance {
     /// Droop alone, or with integration at a gain.
     pub fn new(grid: &Grid, scheme: Scheme, gain_per_s: f64) -> Self {
-        let settings = Settings { cycle_s: CYCLE_S, gain_per_s, participation: Participation::Ramp };
-        let control = (scheme == Scheme::AreaControlError)
-            .then(|| AreaControlError::new(grid, &settings));
+        let settings =
+            Settings { cycle_s: CYCLE_S, gain_per_s, participation: Participation::Ramp };
+        let control =
+            (scheme == Scheme::AreaControlError).then(|| AreaControlError::new(grid, &settings));
         Self { control, next_cycle_s: CYCLE_S, held: Vec::new() }
     }
 
@@ -64,8 +65,7 @@ impl Balance {
 pub fn area_freq_dev_hz(grid: &Grid, plant: &Plant) -> Vec<f64> {
     let mut sums = vec![[0.0_f64; 4]; grid.areas.len()];
     let values = plant.bus_freq_dev_hz().iter().zip(plant.bus_inertia());
-    for ((bus, island), (&freq, &inertia)) in
-        grid.buses.iter().zip(plant.bus_island()).zip(values)
+    for ((bus, island), (&freq, &inertia)) in grid.buses.iter().zip(plant.bus_island()).zip(values)
     {
         if island.is_some() {
             let [weighted, weight, plain, count] = &mut sums[bus.area];
@@ -112,13 +112,15 @@ pub fn tune(
 fn deviation(grid: &Grid, run: &Recording) -> f64 {
     let series = &run.series;
     let samples = series.times_s.len().max(1) as f64;
-    let square = |values: &mut dyn Iterator<Item = f64>| values.map(|v| v * v).sum::<f64>() / samples;
+    let square =
+        |values: &mut dyn Iterator<Item = f64>| values.map(|v| v * v).sum::<f64>() / samples;
     let freq: f64 = series
         .area_freq_dev_hz
         .iter()
         .map(|area| square(&mut area.iter().map(|hz| hz / 0.01)))
         .sum();
-    let ties = (0..grid.lines.len()).filter(|&line| series.schedule_mw[line].iter().any(|&s| s != 0.0));
+    let ties =
+        (0..grid.lines.len()).filter(|&line| series.schedule_mw[line].iter().any(|&s| s != 0.0));
     let flows: f64 = ties
         .map(|line| {
             let pairs = series.line_flow_mw[line].iter().zip(&series.schedule_mw[line]);

@@ -127,8 +127,7 @@ impl Desk {
             tie_flow_mw: pack_readings(export, ties).unwrap_or_default(),
             output_mw: pack_readings(output, outputs).unwrap_or_default(),
             shed_mw: pack_readings(shed, sheds).unwrap_or_default(),
-            feeder_load_mw: pack_readings(area.feeders.iter().map(load), loads)
-                .unwrap_or_default(),
+            feeder_load_mw: pack_readings(area.feeders.iter().map(load), loads).unwrap_or_default(),
             line_closed: pack_bits(area.lines.iter().map(|&l| closed[l]), line_bits)
                 .unwrap_or_default(),
             tie_closed: pack_bits(area.ties.iter().map(|&l| closed[l]), tie_bits)

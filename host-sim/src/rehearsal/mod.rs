@@ -12,8 +12,8 @@
 mod balance;
 mod crew;
 mod desk;
-mod recorder;
 mod ramps;
+mod recorder;
 mod tell;
 
 use crate::case::model::{Event, Grid, Happening, Play, UnitStatus};
@@ -153,8 +153,8 @@ impl<'g> Loop<'g> {
     fn hold_base_points(&mut self) {
         let baseline = matches!(self.helm, Helm::Baseline(_));
         for (unit, u) in self.grid.units.iter().enumerate() {
-            let unmoved = u.status == UnitStatus::Fixed
-                || (baseline && u.status == UnitStatus::Available);
+            let unmoved =
+                u.status == UnitStatus::Fixed || (baseline && u.status == UnitStatus::Available);
             if unmoved {
                 self.plant.set_unit_setpoint_mw(unit, self.ramps.base_mw(unit));
             }

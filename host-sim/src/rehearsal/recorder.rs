@@ -221,7 +221,8 @@ fn end_of(grid: &Grid, plant: &Plant, helm: Option<(&Ramps, Option<&Crew>)>) -> 
     let schedule_mw: Vec<f64> = (0..grid.lines.len())
         .map(|line| helm.map_or(0.0, |(ramps, _)| ramps.schedule_mw(line)))
         .collect();
-    let base = |unit: usize| helm.map_or(grid.units[unit].base_mw, |(ramps, _)| ramps.base_mw(unit));
+    let base =
+        |unit: usize| helm.map_or(grid.units[unit].base_mw, |(ramps, _)| ramps.base_mw(unit));
     let black = grid.buses.iter().zip(plant.bus_island()).zip(plant.bus_load_mw());
     FinalState {
         bus_island: plant.bus_island().to_vec(),

@@ -40,40 +40,22 @@ pub fn rows(d: &Document) -> Vec<Row> {
         name,
         values: runs.iter().map(|r| value(r)).collect(),
     };
-    let worst_tie = |r: &RunFigures| {
-        r.areas
-            .iter()
-            .map(|a| a.ties_off_schedule_mw)
-            .fold(0.0, f64::max)
-    };
+    let worst_tie =
+        |r: &RunFigures| r.areas.iter().map(|a| a.ties_off_schedule_mw).fold(0.0, f64::max);
     let moved = |r: &RunFigures| r.areas.iter().map(|a| a.units_moved).sum::<usize>();
     vec![
         row("Outcome", &|r| outcome_word(r).into()),
         row("Limits broken", &|r| r.broken_by.len().to_string()),
-        row("Lowest frequency [Hz]", &|r| {
-            format!("{:.3}", r.lowest_frequency_hz)
-        }),
-        row("Highest frequency [Hz]", &|r| {
-            format!("{:.3}", r.highest_frequency_hz)
-        }),
-        row("Steepest slope [Hz/s]", &|r| {
-            format!("{:+.3}", r.steepest_hz_per_s)
-        }),
+        row("Lowest frequency [Hz]", &|r| format!("{:.3}", r.lowest_frequency_hz)),
+        row("Highest frequency [Hz]", &|r| format!("{:.3}", r.highest_frequency_hz)),
+        row("Steepest slope [Hz/s]", &|r| format!("{:+.3}", r.steepest_hz_per_s)),
         row("Back within 10 mHz", &|r| settling(r).0),
-        row("Worst loading [%]", &|r| {
-            format!("{:.1}", 100.0 * r.worst_loading)
-        }),
-        row("Time above rating [s]", &|r| {
-            format!("{:.2}", r.over_rating_s)
-        }),
-        row("Ties off schedule [MW]", &|r| {
-            format!("{:.2}", worst_tie(r))
-        }),
+        row("Worst loading [%]", &|r| format!("{:.1}", 100.0 * r.worst_loading)),
+        row("Time above rating [s]", &|r| format!("{:.2}", r.over_rating_s)),
+        row("Ties off schedule [MW]", &|r| format!("{:.2}", worst_tie(r))),
         row("Units moved", &|r| moved(r).to_string()),
         row("Load shed [MW]", &|r| format!("{:.2}", r.judge.shed_mw)),
-        row("Load in the dark [MW]", &|r| {
-            format!("{:.1}", r.black_load_mw)
-        }),
+        row("Load in the dark [MW]", &|r| format!("{:.1}", r.black_load_mw)),
         row("Cost of set-points", &|r| format!("{:.4}", r.judge.cost)),
     ]
 }

@@ -16,19 +16,12 @@ type Column<'a> = (String, Box<dyn Fn(usize) -> String + 'a>);
 /// Errors: [`ReportError::Layout`] if the library refuses.
 pub fn trace(grid: &Grid, recording: &Recording) -> Result<String, ReportError> {
     let columns = columns(grid, recording);
-    let refused = |why: String| ReportError::Layout {
-        what: "trace.csv",
-        why,
-    };
+    let refused = |why: String| ReportError::Layout { what: "trace.csv", why };
     let mut table = csv::Writer::from_writer(Vec::new());
-    table
-        .write_record(columns.iter().map(|c| &c.0))
-        .map_err(|e| refused(e.to_string()))?;
+    table.write_record(columns.iter().map(|c| &c.0)).map_err(|e| refused(e.to_string()))?;
     for sample in 0..recording.series.times_s.len() {
         let row = columns.iter().map(|(_, text)| text(sample));
-        table
-            .write_record(row)
-            .map_err(|e| refused(e.to_string()))?;
+        table.write_record(row).map_err(|e| refused(e.to_string()))?;
     }
     let bytes = table.into_inner().map_err(|e| refused(e.to_string()))?;
     String::from_utf8(bytes).map_err(|e| refused(e.to_string()))
@@ -52,10 +45,7 @@ fn columns<'a>(grid: &'a Grid, recording: &'a Recording) -> Vec<Column<'a>> {
     let value = |series: &'a [Vec<f64>], item: usize| {
         move |i: usize| series.get(item).and_then(|v| v.get(i)).copied()
     };
-    out.push((
-        "time_s".into(),
-        Box::new(|i| number(s.times_s.get(i).copied())),
-    ));
+    out.push(("time_s".into(), Box::new(|i| number(s.times_s.get(i).copied()))));
     for (a, area) in grid.areas.iter().enumerate() {
         let dev_hz = value(&s.area_freq_dev_hz, a);
         let nominal_hz = grid.nominal_hz;
@@ -63,35 +53,19 @@ fn columns<'a>(grid: &'a Grid, recording: &'a Recording) -> Vec<Column<'a>> {
             format!("area {} frequency_hz", area.name),
             Box::new(move |i| number(dev_hz(i).map(|d| nominal_hz + d))),
         ));
-        let rung = move |i: usize| {
-            s.rung
-                .get(a)
-                .and_then(|r| r.get(i))
-                .map_or("", |r| rung_word(*r))
-        };
-        out.push((
-            format!("area {} rung", area.name),
-            Box::new(move |i| rung(i).to_owned()),
-        ));
+        let rung =
+            move |i: usize| s.rung.get(a).and_then(|r| r.get(i)).map_or("", |r| rung_word(*r));
+        out.push((format!("area {} rung", area.name), Box::new(move |i| rung(i).to_owned())));
         let verdict = move |i: usize| {
-            s.verdict
-                .get(a)
-                .and_then(|v| v.get(i))
-                .map_or("", |v| verdict_word(*v))
+            s.verdict.get(a).and_then(|v| v.get(i)).map_or("", |v| verdict_word(*v))
         };
-        out.push((
-            format!("area {} verdict", area.name),
-            Box::new(move |i| verdict(i).to_owned()),
-        ));
+        out.push((format!("area {} verdict", area.name), Box::new(move |i| verdict(i).to_owned())));
     }
     for (l, line) in grid.lines.iter().enumerate() {
         let flow = value(&s.line_flow_mw, l);
         if grid.buses[line.from].area != grid.buses[line.to].area {
             let schedule = value(&s.schedule_mw, l);
-            out.push((
-                format!("line {} flow_mw", line.name),
-                Box::new(move |i| number(flow(i))),
-            ));
+            out.push((format!("line {} flow_mw", line.name), Box::new(move |i| number(flow(i)))));
             out.push((
                 format!("line {} schedule_mw", line.name),
                 Box::new(move |i| number(schedule(i))),
@@ -111,17 +85,11 @@ fn columns<'a>(grid: &'a Grid, recording: &'a Recording) -> Vec<Column<'a>> {
             format!("unit {} setpoint_mw", unit.name),
             Box::new(move |i| number(setpoint(i))),
         ));
-        out.push((
-            format!("unit {} output_mw", unit.name),
-            Box::new(move |i| number(output(i))),
-        ));
+        out.push((format!("unit {} output_mw", unit.name), Box::new(move |i| number(output(i)))));
     }
     for (f, feeder) in grid.feeders.iter().enumerate() {
         let shed = value(&s.feeder_shed_mw, f);
-        out.push((
-            format!("feeder {} shed_mw", feeder.name),
-            Box::new(move |i| number(shed(i))),
-        ));
+        out.push((format!("feeder {} shed_mw", feeder.name), Box::new(move |i| number(shed(i)))));
     }
     out
 }

@@ -204,24 +204,15 @@ pub fn document(bundle: &Bundle) -> Document {
         events: r
             .story
             .iter()
-            .map(|t| EventFigures {
-                at_s: t.at_s,
-                text: t.text.clone(),
-            })
+            .map(|t| EventFigures { at_s: t.at_s, text: t.text.clone() })
             .collect(),
-        compare: bundle
-            .others
-            .iter()
-            .map(|(r, j)| run_figures(bundle.grid, r, j))
-            .collect(),
+        compare: bundle.others.iter().map(|(r, j)| run_figures(bundle.grid, r, j)).collect(),
         meta: bundle.meta.clone(),
     }
 }
 
 fn name_of<T>(items: &[T], index: usize, name: impl Fn(&T) -> &str) -> String {
-    items
-        .get(index)
-        .map_or_else(|| format!("number {index}"), |item| name(item).to_owned())
+    items.get(index).map_or_else(|| format!("number {index}"), |item| name(item).to_owned())
 }
 
 /// Figures of one run.
@@ -254,9 +245,7 @@ pub fn run_figures(grid: &Grid, recording: &Recording, judgement: &Judgement) ->
         },
         over_rating_s: e.over_rating_s,
         black_load_mw: recording.end.black_load_mw,
-        areas: (0..grid.areas.len())
-            .map(|a| area_figures(grid, recording, a))
-            .collect(),
+        areas: (0..grid.areas.len()).map(|a| area_figures(grid, recording, a)).collect(),
         judge: JudgeFigures {
             least_rung: judgement.least_rung.iter().map(|r| rung_word(*r)).collect(),
             cost: judgement.cost,
@@ -273,20 +262,14 @@ pub fn run_figures(grid: &Grid, recording: &Recording, judgement: &Judgement) ->
 fn area_figures(grid: &Grid, recording: &Recording, area: usize) -> AreaFigures {
     let end = &recording.end;
     let frames = recording.frames.get(area).copied().unwrap_or_default();
-    let last: Option<SaidVerdict> = recording
-        .series
-        .verdict
-        .get(area)
-        .and_then(|v| v.last())
-        .copied();
+    let last: Option<SaidVerdict> =
+        recording.series.verdict.get(area).and_then(|v| v.last()).copied();
     let inside = |bus: usize| grid.buses[bus].area == area;
     AreaFigures {
         name: grid.areas[area].name.clone(),
         rung: rung_word(end.rung.get(area).copied().unwrap_or(0)),
         worst_rung: rung_word(recording.worst_rung.get(area).copied().unwrap_or(0)),
-        verdict: last
-            .filter(|_| recording.scheme == Scheme::Steward)
-            .map(verdict_word),
+        verdict: last.filter(|_| recording.scheme == Scheme::Steward).map(verdict_word),
         steward_alive: end.steward_alive.get(area).copied().unwrap_or(true),
         proofs: recording.proofs.iter().filter(|p| p.area == area).count(),
         shed_mw: grid
@@ -301,21 +284,14 @@ fn area_figures(grid: &Grid, recording: &Recording, area: usize) -> AreaFigures 
             .filter(|&u| inside(grid.units[u].bus) && end.unit_in_service[u])
             .filter(|&u| (end.unit_setpoint_mw[u] - end.unit_base_mw[u]).abs() > MOVED_MW)
             .count(),
-        frames: FrameFigures {
-            sent: frames.sent,
-            lost: frames.lost,
-            refused: frames.refused,
-        },
+        frames: FrameFigures { sent: frames.sent, lost: frames.lost, refused: frames.refused },
     }
 }
 
 fn ties_off_schedule_mw(grid: &Grid, end: &FinalState, area: usize) -> f64 {
     (0..grid.lines.len())
         .filter(|&l| {
-            let (a, b) = (
-                grid.buses[grid.lines[l].from].area,
-                grid.buses[grid.lines[l].to].area,
-            );
+            let (a, b) = (grid.buses[grid.lines[l].from].area, grid.buses[grid.lines[l].to].area);
             a != b && (a == area || b == area) && end.line_closed[l]
         })
         .map(|l| (end.line_flow_mw[l] - end.schedule_mw[l]).abs())

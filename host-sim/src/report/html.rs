@@ -74,11 +74,7 @@ fn header(d: &Document) -> Markup {
 }
 
 fn outcome(run: &RunFigures) -> Markup {
-    let class = if run.outcome == Outcome::Broken {
-        "outcome broken"
-    } else {
-        "outcome"
-    };
+    let class = if run.outcome == Outcome::Broken { "outcome broken" } else { "outcome" };
     html! {
         section class=(class) {
             h2 { "Outcome" }
@@ -114,9 +110,7 @@ fn measurements(play: &Play) -> String {
     let l = &play.links;
     let faulty = l.delay_ticks > 0
         || l.jitter_ticks > 0
-        || [l.loss, l.duplicate, l.reorder, l.corrupt]
-            .iter()
-            .any(|p| *p > 0.0);
+        || [l.loss, l.duplicate, l.reorder, l.corrupt].iter().any(|p| *p > 0.0);
     let where_ = match (faulty, l.plant_too) {
         (false, _) => return "Measurements are exact and simultaneous, links ideal.".into(),
         (true, true) => "between stewards and between plant and stewards",
@@ -134,12 +128,7 @@ fn measurements(play: &Play) -> String {
 }
 
 fn actuators(grid: &Grid) -> String {
-    match grid
-        .units
-        .iter()
-        .filter(|u| u.gain_error != 0.0 || u.bias_mw != 0.0)
-        .count()
-    {
+    match grid.units.iter().filter(|u| u.gain_error != 0.0 || u.bias_mw != 0.0).count() {
         0 => "Units follow their set-points exactly, within ramp and lag.".into(),
         n => format!("{n} units deliver other than their set-point, as the grid file says."),
     }
@@ -182,11 +171,7 @@ fn area_row(area: &AreaFigures, least: Option<&&'static str>) -> Markup {
         Some(_) => [area.rung, area.worst_rung, least.copied().unwrap_or("-")],
         None => ["-"; 3],
     };
-    let verdict = if area.steward_alive {
-        area.verdict.unwrap_or("-")
-    } else {
-        "steward dead"
-    };
+    let verdict = if area.steward_alive { area.verdict.unwrap_or("-") } else { "steward dead" };
     html! {
         tr {
             th scope="row" { (area.name) }
@@ -295,28 +280,13 @@ fn settings(grid: &Grid, play: &Play) -> Markup {
                 grid.feeders.len()
             ),
         ),
-        (
-            "Base and nominal frequency",
-            format!("{} MVA, {} Hz", grid.base_mva, grid.nominal_hz),
-        ),
-        (
-            "Tick and plant step",
-            format!("{} s, {} s", play.run.tick_s, play.run.plant_step_s),
-        ),
-        (
-            "Iterations per tick, shadow",
-            format!("{}, {}", s.iterations, s.shadow_iterations),
-        ),
+        ("Base and nominal frequency", format!("{} MVA, {} Hz", grid.base_mva, grid.nominal_hz)),
+        ("Tick and plant step", format!("{} s, {} s", play.run.tick_s, play.run.plant_step_s)),
+        ("Iterations per tick, shadow", format!("{}, {}", s.iterations, s.shadow_iterations)),
         ("Filter of load estimates", format!("{} s", s.filter_s)),
-        (
-            "Estimates frozen after an event",
-            format!("{} s", s.event_freeze_s),
-        ),
+        ("Estimates frozen after an event", format!("{} s", s.event_freeze_s)),
         ("Tie band", format!("{} MW", s.tie_band_mw)),
-        (
-            "Tie price at each end",
-            format!("{} per pu", s.tie_price_per_pu),
-        ),
+        ("Tie price at each end", format!("{} per pu", s.tie_price_per_pu)),
         ("Proof threshold", format!("{} MW", s.proof_threshold_mw)),
         ("Help radius", format!("{} areas", s.help_hops)),
     ];

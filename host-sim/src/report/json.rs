@@ -12,8 +12,5 @@ use super::{Bundle, ReportError};
 pub fn document(bundle: &Bundle) -> Result<String, ReportError> {
     serde_json::to_string_pretty(&gather(bundle))
         .map(|text| text + "\n")
-        .map_err(|e| ReportError::Layout {
-            what: "result.json",
-            why: e.to_string(),
-        })
+        .map_err(|e| ReportError::Layout { what: "result.json", why: e.to_string() })
 }

@@ -39,27 +39,14 @@ fn verdict_look(verdict: SaidVerdict) -> (&'static str, f64) {
 /// Draw a lane per area, and the legend below them.
 pub(super) fn draw_lanes(out: &mut Drawing, frame: &Frame, grid: &Grid, top: f64) {
     let title = "Rung (band) and verdict (strip below it) by area";
-    out.styled_text(
-        (LEFT, top - 8.0),
-        Anchor::Start,
-        12.5,
-        INK,
-        r#"font-weight="600""#,
-        title,
-    );
+    out.styled_text((LEFT, top - 8.0), Anchor::Start, 12.5, INK, r#"font-weight="600""#, title);
     let times = &frame.recording.series.times_s;
     let until = |i: usize| frame.x(times.get(i).copied().unwrap_or(frame.end_s));
     let empty = (Vec::new(), Vec::new());
     for (a, area) in grid.areas.iter().enumerate() {
         let y = top + a as f64 * LANE;
         let s = &frame.recording.series;
-        out.text(
-            (WIDTH - RIGHT + 12.0, y + 15.0),
-            Anchor::Start,
-            11.0,
-            INK,
-            &short(&area.name),
-        );
+        out.text((WIDTH - RIGHT + 12.0, y + 15.0), Anchor::Start, 11.0, INK, &short(&area.name));
         for (from, to, rung) in spells(s.rung.get(a).unwrap_or(&empty.0)) {
             let (x0, x1) = (until(from), until(to));
             out.rect(
@@ -69,21 +56,9 @@ pub(super) fn draw_lanes(out: &mut Drawing, frame: &Frame, grid: &Grid, top: f64
                 r##"stroke="#ffffff" stroke-width="0.6""##,
             );
             if x1 - x0 > 46.0 {
-                out.text(
-                    (x0 + 5.0, y + 14.5),
-                    Anchor::Start,
-                    11.0,
-                    INK,
-                    rung_word(rung),
-                );
+                out.text((x0 + 5.0, y + 14.5), Anchor::Start, 11.0, INK, rung_word(rung));
             } else if x1 - x0 > 9.0 {
-                out.text(
-                    (x0 + 2.0, y + 14.5),
-                    Anchor::Start,
-                    9.0,
-                    INK,
-                    &rung.to_string(),
-                );
+                out.text((x0 + 2.0, y + 14.5), Anchor::Start, 9.0, INK, &rung.to_string());
             }
         }
         for (from, to, verdict) in spells(s.verdict.get(a).unwrap_or(&empty.1)) {
@@ -109,21 +84,12 @@ fn lane_legend(out: &mut Drawing, y: f64) {
         x += 82.0;
     }
     x += 20.0;
-    for verdict in [
-        SaidVerdict::Settled,
-        SaidVerdict::Working,
-        SaidVerdict::Impossible,
-        SaidVerdict::Blind,
-    ] {
+    for verdict in
+        [SaidVerdict::Settled, SaidVerdict::Working, SaidVerdict::Impossible, SaidVerdict::Blind]
+    {
         let (fill, height) = verdict_look(verdict);
         out.rect((x, y + 9.0 - height), (16.0, height), fill, "");
-        out.text(
-            (x + 20.0, y + 9.0),
-            Anchor::Start,
-            10.5,
-            SLATE,
-            verdict_word(verdict),
-        );
+        out.text((x + 20.0, y + 9.0), Anchor::Start, 10.5, SLATE, verdict_word(verdict));
         x += 90.0;
     }
 }

@@ -55,10 +55,7 @@ fn own_layout(grid: &Grid) -> Vec<(f64, f64)> {
             let spread = if grid.areas.len() > 1 { 2.6 } else { 0.0 };
             let own = around + turn * seen[bus.area] as f64 / count(bus.area);
             seen[bus.area] += 1;
-            (
-                1.5 * spread * around.cos() + 1.3 * own.cos(),
-                spread * around.sin() + own.sin(),
-            )
+            (1.5 * spread * around.cos() + 1.3 * own.cos(), spread * around.sin() + own.sin())
         })
         .collect()
 }
@@ -67,9 +64,7 @@ fn own_layout(grid: &Grid) -> Vec<(f64, f64)> {
 fn scaled(raw: &[(f64, f64)]) -> (Vec<(f64, f64)>, f64) {
     let bounds = |pick: &dyn Fn(&(f64, f64)) -> f64| {
         let finite = raw.iter().map(pick).filter(|v| v.is_finite());
-        finite.fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), v| {
-            (l.min(v), h.max(v))
-        })
+        finite.fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), v| (l.min(v), h.max(v)))
     };
     let ((x0, x1), (y0, y1)) = (bounds(&|p| p.0), bounds(&|p| p.1));
     let (w, h) = ((x1 - x0).max(1e-9), (y1 - y0).max(1e-9));
@@ -80,12 +75,7 @@ fn scaled(raw: &[(f64, f64)]) -> (Vec<(f64, f64)>, f64) {
     let (dx, dy) = ((room - scale * w) / 2.0, (tall - scale * h) / 2.0);
     let at = raw
         .iter()
-        .map(|(x, y)| {
-            (
-                MARGIN + dx + scale * (x - x0),
-                MARGIN + dy + scale * (y - y0),
-            )
-        })
+        .map(|(x, y)| (MARGIN + dx + scale * (x - x0), MARGIN + dy + scale * (y - y0)))
         .collect();
     (at, tall + 2.0 * MARGIN + FOOT)
 }
@@ -102,11 +92,7 @@ fn tints(out: &mut Drawing, grid: &Grid, at: &[(f64, f64)]) {
                 out.line(at[line.from], at[line.to], colour(a), 58.0, "");
             }
         }
-        for (b, (x, y)) in at
-            .iter()
-            .enumerate()
-            .filter(|(b, _)| grid.buses[*b].area == a)
-        {
+        for (b, (x, y)) in at.iter().enumerate().filter(|(b, _)| grid.buses[*b].area == a) {
             let _ = b;
             out.raw(&format!(r#"<circle cx="{x:.1}" cy="{y:.1}" r="34"/>"#));
         }
@@ -134,18 +120,10 @@ fn area_names(out: &mut Drawing, grid: &Grid, at: &[(f64, f64)]) {
         let x = own.iter().map(|p| p.0).sum::<f64>() / own.len() as f64;
         let low = own.iter().map(|p| p.1).fold(f64::NEG_INFINITY, f64::max);
         let half: Half = (5.0 * area.name.chars().count() as f64, 9.0);
-        let candidates = [
-            (x, highest.1 - 43.0),
-            (highest.0, highest.1 - 43.0),
-            (x, low + 46.0),
-        ];
+        let candidates = [(x, highest.1 - 43.0), (highest.0, highest.1 - 43.0), (x, low + 46.0)];
         let crossed = |c: &(f64, f64)| lines.iter().filter(|l| crosses(l, *c, half)).count();
         // The first of equals: above, if nothing speaks against it.
-        let best = candidates
-            .iter()
-            .min_by_key(|c| crossed(c))
-            .copied()
-            .unwrap_or((x, low));
+        let best = candidates.iter().min_by_key(|c| crossed(c)).copied().unwrap_or((x, low));
         let more = format!(r#"font-weight="700" letter-spacing="1" {HALO}"#);
         let place = (best.0, best.1 + 5.0);
         out.styled_text(place, Anchor::Middle, 15.0, colour(a), &more, &area.name);
@@ -177,10 +155,7 @@ fn lines(out: &mut Drawing, grid: &Grid, end: &FinalState, at: &[(f64, f64)]) {
     for (l, line) in grid.lines.iter().enumerate() {
         let (from, to) = (at[line.from], at[line.to]);
         // Parallel lines stand beside each other.
-        let twin = grid.lines[..l]
-            .iter()
-            .filter(|o| same_ends(o, line))
-            .count() as f64;
+        let twin = grid.lines[..l].iter().filter(|o| same_ends(o, line)).count() as f64;
         let (from, to) = beside(from, to, 9.0 * twin);
         if !end.line_closed[l] {
             out.line(from, to, SLATE, 1.2, "3 5");
@@ -204,23 +179,12 @@ fn lines(out: &mut Drawing, grid: &Grid, end: &FinalState, at: &[(f64, f64)]) {
     }
     let mut taken: Vec<(f64, f64)> = at.to_vec();
     for (from, to, stroke, text) in labels {
-        let along = |t: f64| {
-            (
-                from.0 + t * (to.0 - from.0),
-                from.1 + t * (to.1 - from.1) - 1.5,
-            )
-        };
+        let along = |t: f64| (from.0 + t * (to.0 - from.0), from.1 + t * (to.1 - from.1) - 1.5);
         let free = |p: &(f64, f64)| {
-            taken
-                .iter()
-                .all(|q| (p.0 - q.0).abs() > 28.0 || (p.1 - q.1).abs() > 13.0)
+            taken.iter().all(|q| (p.0 - q.0).abs() > 28.0 || (p.1 - q.1).abs() > 13.0)
         };
         let tries = [0.5, 0.4, 0.32, 0.74, 0.25];
-        let place = tries
-            .iter()
-            .map(|t| along(*t))
-            .find(free)
-            .unwrap_or(along(0.5));
+        let place = tries.iter().map(|t| along(*t)).find(free).unwrap_or(along(0.5));
         taken.push(place);
         let at = (place.0, place.1 + 5.0);
         out.styled_text(at, Anchor::Middle, 10.5, stroke, HALO, &text);
@@ -268,11 +232,8 @@ fn arrow(
 fn buses(out: &mut Drawing, grid: &Grid, end: &FinalState, at: &[(f64, f64)]) {
     for (b, bus) in grid.buses.iter().enumerate() {
         let (x, y) = at[b];
-        let feeds = grid
-            .units
-            .iter()
-            .enumerate()
-            .any(|(u, unit)| unit.bus == b && end.unit_in_service[u]);
+        let feeds =
+            grid.units.iter().enumerate().any(|(u, unit)| unit.bus == b && end.unit_in_service[u]);
         let r = if feeds { 8.5 } else { 5.5 };
         if end.bus_island[b].is_none() {
             out.raw(&format!(
@@ -287,24 +248,13 @@ fn buses(out: &mut Drawing, grid: &Grid, end: &FinalState, at: &[(f64, f64)]) {
                 colour(bus.area)
             ));
         }
-        out.styled_text(
-            (x, y + r + 12.0),
-            Anchor::Middle,
-            10.5,
-            INK,
-            HALO,
-            &bus.name,
-        );
+        out.styled_text((x, y + r + 12.0), Anchor::Middle, 10.5, INK, HALO, &bus.name);
     }
 }
 
 fn legend(out: &mut Drawing, y: f64) {
     let mut x = MARGIN;
-    for (loading, name) in [
-        (0.4, "below 80 %"),
-        (0.9, "80 to 100 %"),
-        (1.1, "above rating"),
-    ] {
+    for (loading, name) in [(0.4, "below 80 %"), (0.9, "80 to 100 %"), (1.1, "above rating")] {
         let (stroke, width) = look(loading);
         out.line((x, y - 4.0), (x + 26.0, y - 4.0), stroke, width, "");
         out.text((x + 32.0, y), Anchor::Start, 11.0, SLATE, name);
@@ -313,17 +263,8 @@ fn legend(out: &mut Drawing, y: f64) {
     out.line((x, y - 4.0), (x + 26.0, y - 4.0), SLATE, 1.2, "3 5");
     out.text((x + 32.0, y), Anchor::Start, 11.0, SLATE, "open");
     x += 82.0;
-    out.raw(&format!(
-        r#"<circle cx="{x:.1}" cy="{:.1}" r="7" fill="{SLATE}"/>"#,
-        y - 4.0
-    ));
-    out.text(
-        (x + 13.0, y),
-        Anchor::Start,
-        11.0,
-        SLATE,
-        "bus with a unit in service",
-    );
+    out.raw(&format!(r#"<circle cx="{x:.1}" cy="{:.1}" r="7" fill="{SLATE}"/>"#, y - 4.0));
+    out.text((x + 13.0, y), Anchor::Start, 11.0, SLATE, "bus with a unit in service");
     x += 178.0;
     out.raw(&format!(
         r#"<circle cx="{x:.1}" cy="{:.1}" r="5" fill="white" stroke="{SLATE}" stroke-width="2"/>"#,

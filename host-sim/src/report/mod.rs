@@ -114,18 +114,9 @@ pub fn write_all(
     check_dir(dir, existing)?;
     let mut files: Vec<(String, String)> = vec![
         ("report.html".into(), html::page(bundle)),
-        (
-            "picture.svg".into(),
-            picture::svg(bundle.grid, &bundle.play.events, bundle.recording),
-        ),
-        (
-            "map.svg".into(),
-            map::svg(bundle.grid, &bundle.recording.end),
-        ),
-        (
-            "trace.csv".into(),
-            csv::trace(bundle.grid, bundle.recording)?,
-        ),
+        ("picture.svg".into(), picture::svg(bundle.grid, &bundle.play.events, bundle.recording)),
+        ("map.svg".into(), map::svg(bundle.grid, &bundle.recording.end)),
+        ("trace.csv".into(), csv::trace(bundle.grid, bundle.recording)?),
     ];
     for (recording, _) in bundle.others {
         let name = format!("trace-{}.csv", scheme_word(recording.scheme));

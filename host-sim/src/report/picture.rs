@@ -59,17 +59,10 @@ impl Frame<'_> {
 /// `events` are the play's: each is marked through all panels.
 pub fn svg(grid: &Grid, events: &[Event], recording: &Recording) -> String {
     let last_s = recording.series.times_s.last().copied().unwrap_or(0.0);
-    let frame = Frame {
-        recording,
-        end_s: last_s.max(1e-9),
-    };
+    let frame = Frame { recording, end_s: last_s.max(1e-9) };
     let panels = panels(grid, recording);
     let stewards = recording.scheme == Scheme::Steward;
-    let lanes = if stewards {
-        grid.areas.len() as f64 * LANE + 46.0
-    } else {
-        0.0
-    };
+    let lanes = if stewards { grid.areas.len() as f64 * LANE + 46.0 } else { 0.0 };
     let height = TOP + panels.len() as f64 * (PANEL + GAP) + lanes + 26.0;
     let mut out = Drawing::default();
     out.rect((0.0, 0.0), (WIDTH, height), "#ffffff", "");
@@ -94,21 +87,9 @@ fn time_axis(out: &mut Drawing, frame: &Frame, axis_y: f64) {
     for t in &steps {
         let x = frame.x(*t);
         out.line((x, TOP), (x, axis_y), HAIR, 1.0, "");
-        out.text(
-            (x, axis_y + 15.0),
-            Anchor::Middle,
-            11.0,
-            SLATE,
-            &format!("{t:.places$}"),
-        );
+        out.text((x, axis_y + 15.0), Anchor::Middle, 11.0, SLATE, &format!("{t:.places$}"));
     }
-    out.text(
-        (WIDTH - RIGHT + 14.0, axis_y + 15.0),
-        Anchor::Start,
-        11.0,
-        SLATE,
-        "s",
-    );
+    out.text((WIDTH - RIGHT + 14.0, axis_y + 15.0), Anchor::Start, 11.0, SLATE, "s");
 }
 
 /// Dotted lines where the play does something; the story says what.
@@ -182,10 +163,8 @@ fn tie_panel<'a>(grid: &'a Grid, recording: &'a Recording) -> Panel<'a> {
     let left_out = ties.len().saturating_sub(CURVES);
     let mut curves = Vec::new();
     for (n, &l) in ties.iter().take(CURVES).enumerate() {
-        let (flow, schedule) = (
-            series(&recording.series.line_flow_mw, l),
-            series(&recording.series.schedule_mw, l),
-        );
+        let (flow, schedule) =
+            (series(&recording.series.line_flow_mw, l), series(&recording.series.schedule_mw, l));
         let name = grid.lines[l].name.clone();
         curves.push(Curve {
             name,
@@ -225,21 +204,17 @@ fn loading_panel<'a>(grid: &'a Grid, recording: &'a Recording) -> Panel<'a> {
     // Ties in value keep file order, so that the picture is the same every time.
     ranked.sort_by(|a, b| b.0.total_cmp(&a.0).then(a.1.cmp(&b.1)));
     let left_out = ranked.len().saturating_sub(CURVES);
-    let curves = ranked
-        .into_iter()
-        .take(CURVES)
-        .enumerate()
-        .map(|(n, (_, l))| {
-            let flow = series(&recording.series.line_flow_mw, l);
-            let rating_mw = grid.lines[l].rating_mw;
-            Curve {
-                name: grid.lines[l].name.clone(),
-                values: Box::new(move |i| flow(i).map(|f| 100.0 * f.abs() / rating_mw)),
-                colour: colour(n),
-                dash: dash(n / 2),
-                companion: false,
-            }
-        });
+    let curves = ranked.into_iter().take(CURVES).enumerate().map(|(n, (_, l))| {
+        let flow = series(&recording.series.line_flow_mw, l);
+        let rating_mw = grid.lines[l].rating_mw;
+        Curve {
+            name: grid.lines[l].name.clone(),
+            values: Box::new(move |i| flow(i).map(|f| 100.0 * f.abs() / rating_mw)),
+            colour: colour(n),
+            dash: dash(n / 2),
+            companion: false,
+        }
+    });
     Panel {
         title: "Line loading, worst ten [% of continuous rating]".into(),
         curves: curves.collect(),
@@ -261,17 +236,13 @@ fn setpoint_panel<'a>(grid: &'a Grid, recording: &'a Recording) -> Panel<'a> {
         .collect();
     moved.sort_by(|a, b| b.0.total_cmp(&a.0).then(a.1.cmp(&b.1)));
     let left_out = moved.len().saturating_sub(CURVES);
-    let curves = moved
-        .into_iter()
-        .take(CURVES)
-        .enumerate()
-        .map(|(n, (_, u))| Curve {
-            name: grid.units[u].name.clone(),
-            values: Box::new(change(u)),
-            colour: colour(n),
-            dash: dash(n / 2),
-            companion: false,
-        });
+    let curves = moved.into_iter().take(CURVES).enumerate().map(|(n, (_, u))| Curve {
+        name: grid.units[u].name.clone(),
+        values: Box::new(change(u)),
+        colour: colour(n),
+        dash: dash(n / 2),
+        companion: false,
+    });
     Panel {
         title: "Set-points, change from the start, most moved first [MW]".into(),
         curves: curves.collect(),
@@ -284,11 +255,8 @@ fn setpoint_panel<'a>(grid: &'a Grid, recording: &'a Recording) -> Panel<'a> {
 fn shed_panel<'a>(grid: &'a Grid, recording: &'a Recording) -> Panel<'a> {
     let shed = |a: usize| {
         move |i: usize| {
-            let inside = grid
-                .feeders
-                .iter()
-                .enumerate()
-                .filter(|(_, f)| grid.buses[f.bus].area == a);
+            let inside =
+                grid.feeders.iter().enumerate().filter(|(_, f)| grid.buses[f.bus].area == a);
             Some(
                 inside
                     .filter_map(|(f, _)| series(&recording.series.feeder_shed_mw, f)(i))
@@ -296,9 +264,8 @@ fn shed_panel<'a>(grid: &'a Grid, recording: &'a Recording) -> Panel<'a> {
             )
         }
     };
-    let curves = (0..grid.areas.len())
-        .filter(|&a| size_of(recording, &shed(a)) > 0.05)
-        .map(|a| Curve {
+    let curves =
+        (0..grid.areas.len()).filter(|&a| size_of(recording, &shed(a)) > 0.05).map(|a| Curve {
             name: grid.areas[a].name.clone(),
             values: Box::new(shed(a)),
             colour: colour(a),
@@ -319,10 +286,7 @@ fn range(frame: &Frame, panel: &Panel) -> (f64, f64) {
     let samples = frame.recording.series.times_s.len();
     let (mut low, mut high) = (f64::INFINITY, f64::NEG_INFINITY);
     for curve in &panel.curves {
-        for v in (0..samples)
-            .filter_map(&curve.values)
-            .filter(|v| v.is_finite())
-        {
+        for v in (0..samples).filter_map(&curve.values).filter(|v| v.is_finite()) {
             low = low.min(v);
             high = high.max(v);
         }
@@ -352,13 +316,7 @@ fn draw_panel(out: &mut Drawing, frame: &Frame, panel: &Panel, top: f64) {
     let places = decimals(&steps);
     for v in &steps {
         out.line((LEFT, y(*v)), (right, y(*v)), HAIR, 1.0, "");
-        out.text(
-            (LEFT - 7.0, y(*v) + 4.0),
-            Anchor::End,
-            11.0,
-            SLATE,
-            &format!("{v:.places$}"),
-        );
+        out.text((LEFT - 7.0, y(*v) + 4.0), Anchor::End, 11.0, SLATE, &format!("{v:.places$}"));
     }
     for mark in &panel.marks {
         out.line((LEFT, y(*mark)), (right, y(*mark)), ALARM, 1.2, "6 3");
@@ -381,25 +339,13 @@ fn draw_panel(out: &mut Drawing, frame: &Frame, panel: &Panel, top: f64) {
                 2.0,
                 curve.dash,
             );
-            out.text(
-                (right + 42.0, legend_y + 4.0),
-                Anchor::Start,
-                11.0,
-                INK,
-                &short(&curve.name),
-            );
+            out.text((right + 42.0, legend_y + 4.0), Anchor::Start, 11.0, INK, &short(&curve.name));
             named += 1;
         }
     }
     if panel.left_out > 0 {
         let at = (right + 12.0, top + 12.0 + named as f64 * 14.0);
-        out.text(
-            at,
-            Anchor::Start,
-            10.5,
-            SLATE,
-            &format!("and {} more", panel.left_out),
-        );
+        out.text(at, Anchor::Start, 10.5, SLATE, &format!("and {} more", panel.left_out));
     }
     out.rect(
         (LEFT, top),

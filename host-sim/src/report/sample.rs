@@ -62,10 +62,7 @@ fn unit(name: &str, bus: usize, max_mw: f64, cost_per_pu2: f64) -> Unit {
 }
 
 fn area(name: &str) -> Area {
-    Area {
-        name: name.into(),
-        lowest_rung: 3,
-    }
+    Area { name: name.into(), lowest_rung: 3 }
 }
 
 /// A play without events.
@@ -73,12 +70,7 @@ pub fn play() -> Play {
     Play {
         name: "sample".into(),
         title: "Two areas and a tie".into(),
-        run: Run {
-            duration_s: 30.0,
-            tick_s: 0.1,
-            plant_step_s: 0.01,
-            seed: 7,
-        },
+        run: Run { duration_s: 30.0, tick_s: 0.1, plant_step_s: 0.01, seed: 7 },
         steward: StewardSettings {
             iterations: 50,
             shadow_iterations: 25,
@@ -99,10 +91,7 @@ pub fn play() -> Play {
             corrupt: 0.0,
             plant_too: false,
         },
-        events: vec![Event {
-            at_s: 1.0,
-            what: Happening::LineTrip { line: 0 },
-        }],
+        events: vec![Event { at_s: 1.0, what: Happening::LineTrip { line: 0 } }],
     }
 }
 
@@ -156,18 +145,10 @@ pub fn ring() -> (Grid, Play, Recording) {
         feeders: vec![],
     };
     for (a, name) in names.iter().enumerate() {
-        grid.buses
-            .push(bus(&format!("{name}0"), a, 0.0, (a as f64, 0.0)));
-        grid.buses
-            .push(bus(&format!("{name}1"), a, 100.0, (a as f64, 1.0)));
-        grid.lines
-            .push(line(&format!("{name} inner"), 2 * a, 2 * a + 1, 200.0));
-        grid.lines.push(line(
-            &format!("{name} tie"),
-            2 * a + 1,
-            (2 * a + 2) % 6,
-            200.0,
-        ));
+        grid.buses.push(bus(&format!("{name}0"), a, 0.0, (a as f64, 0.0)));
+        grid.buses.push(bus(&format!("{name}1"), a, 100.0, (a as f64, 1.0)));
+        grid.lines.push(line(&format!("{name} inner"), 2 * a, 2 * a + 1, 200.0));
+        grid.lines.push(line(&format!("{name} tie"), 2 * a + 1, (2 * a + 2) % 6, 200.0));
         grid.units.push(unit(name, 2 * a, 200.0, 1.0));
     }
     let run = recording(&grid);
@@ -207,19 +188,9 @@ pub fn recording(grid: &Grid) -> Recording {
         series: Series::default(),
         extremes: extremes(),
         worst_rung: vec![0; grid.areas.len()],
-        frames: vec![
-            FrameCounts {
-                sent: 600,
-                lost: 0,
-                refused: 0
-            };
-            grid.areas.len()
-        ],
+        frames: vec![FrameCounts { sent: 600, lost: 0, refused: 0 }; grid.areas.len()],
         proofs: vec![],
-        story: vec![Told {
-            at_s: 1.0,
-            text: "line A1-A2 opens".into(),
-        }],
+        story: vec![Told { at_s: 1.0, text: "line A1-A2 opens".into() }],
         end,
     };
     set_units(grid, &mut run, &base);
@@ -245,17 +216,10 @@ fn extremes() -> Extremes {
 fn series(grid: &Grid, end: &FinalState) -> Series {
     let times_s: Vec<f64> = (0..=300).map(|i| f64::from(i) * 0.1).collect();
     let dip = |t: f64| {
-        if t < 1.0 {
-            0.0
-        } else {
-            ((t - 1.0) * 1.3).sin() * (-(t - 1.0) / 4.0).exp()
-        }
+        if t < 1.0 { 0.0 } else { ((t - 1.0) * 1.3).sin() * (-(t - 1.0) / 4.0).exp() }
     };
     let around = |values: &[f64], swing: f64| -> Vec<Vec<f64>> {
-        values
-            .iter()
-            .map(|v| times_s.iter().map(|t| v - swing * dip(*t)).collect())
-            .collect()
+        values.iter().map(|v| times_s.iter().map(|t| v - swing * dip(*t)).collect()).collect()
     };
     Series {
         area_freq_dev_hz: around(&vec![0.0; grid.areas.len()], 0.19),
@@ -265,20 +229,13 @@ fn series(grid: &Grid, end: &FinalState) -> Series {
         feeder_shed_mw: around(&end.feeder_shed_mw, 0.0),
         schedule_mw: around(&end.schedule_mw, 0.0),
         rung: vec![
-            times_s
-                .iter()
-                .map(|t| u8::from((4.0..20.0).contains(t)))
-                .collect();
+            times_s.iter().map(|t| u8::from((4.0..20.0).contains(t))).collect();
             grid.areas.len()
         ],
         verdict: vec![
             times_s
                 .iter()
-                .map(|t| if *t < 12.0 {
-                    SaidVerdict::Working
-                } else {
-                    SaidVerdict::Settled
-                })
+                .map(|t| if *t < 12.0 { SaidVerdict::Working } else { SaidVerdict::Settled })
                 .collect();
             grid.areas.len()
         ],

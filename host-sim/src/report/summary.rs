@@ -103,10 +103,7 @@ pub(super) fn fitted(text: &str, width: usize) -> String {
     if text.chars().count() <= width {
         return format!("{text:<width$}");
     }
-    text.chars()
-        .take(width.saturating_sub(1))
-        .chain(['~'])
-        .collect()
+    text.chars().take(width.saturating_sub(1)).chain(['~']).collect()
 }
 
 fn section(out: &mut String, name: &str, colour: Colour) {
@@ -140,11 +137,7 @@ fn outcome(out: &mut String, run: &RunFigures, colour: Colour) {
         Outcome::Kept => (Tone::Kept, "kept"),
         Outcome::Broken => (Tone::Broken, "broken"),
     };
-    let stopped = if run.stopped {
-        " (stopped before its end)"
-    } else {
-        ""
-    };
+    let stopped = if run.stopped { " (stopped before its end)" } else { "" };
     let _ = writeln!(out, "\nOutcome: {}{stopped}", colour.paint(tone, word));
     bullets(out, &run.broken_by);
 }
@@ -156,20 +149,12 @@ fn story(out: &mut String, d: &Document, colour: Colour) {
     }
     for event in d.events.iter().take(STORY_LINES) {
         for (i, line) in wrapped(&event.text, COLUMNS - 12).iter().enumerate() {
-            let time = if i == 0 {
-                format!("{:>8.1} s", event.at_s)
-            } else {
-                " ".repeat(10)
-            };
+            let time = if i == 0 { format!("{:>8.1} s", event.at_s) } else { " ".repeat(10) };
             let _ = writeln!(out, "{time}  {line}");
         }
     }
     if d.events.len() > STORY_LINES {
-        let _ = writeln!(
-            out,
-            "            and {} more, in the page",
-            d.events.len() - STORY_LINES
-        );
+        let _ = writeln!(out, "            and {} more, in the page", d.events.len() - STORY_LINES);
     }
 }
 
@@ -185,10 +170,7 @@ pub(super) fn settling(run: &RunFigures) -> (String, &'static str) {
     } else if run.settled_s >= run.duration_s - 0.5 {
         ("not back".into(), "an area was outside 10 mHz at the end")
     } else {
-        (
-            format!("{:.2} s", run.settled_s),
-            "last time an area was outside 10 mHz",
-        )
+        (format!("{:.2} s", run.settled_s), "last time an area was outside 10 mHz")
     }
 }
 
@@ -261,23 +243,14 @@ fn area_row(area: &AreaFigures, least: Option<&&'static str>, stewards: bool) ->
 fn areas(out: &mut String, run: &RunFigures, colour: Colour) {
     section(out, "Areas at the end", colour);
     for [a, b, c, d, e, f, g, h, i] in [
-        [
-            "", "rung", "worst", "least", "verdict", "proofs", "ties off", "units", "shed",
-        ],
+        ["", "rung", "worst", "least", "verdict", "proofs", "ties off", "units", "shed"],
         ["", "", "", "", "", "", "[MW]", "moved", "[MW]"],
     ] {
-        let _ = writeln!(
-            out,
-            "  {a:12} {b:<7} {c:<7} {d:<7} {e:<10} {f:>6} {g:>8} {h:>5} {i:>8}"
-        );
+        let _ = writeln!(out, "  {a:12} {b:<7} {c:<7} {d:<7} {e:<10} {f:>6} {g:>8} {h:>5} {i:>8}");
     }
     let stewards = run.scheme == "steward";
     for (i, area) in run.areas.iter().enumerate() {
-        let _ = writeln!(
-            out,
-            "{}",
-            area_row(area, run.judge.least_rung.get(i), stewards)
-        );
+        let _ = writeln!(out, "{}", area_row(area, run.judge.least_rung.get(i), stewards));
     }
     if !stewards {
         return;
@@ -304,11 +277,7 @@ fn judged(out: &mut String, run: &RunFigures, colour: Colour) {
         None => writeln!(out, "  Cost {:.4}, no reference for it", j.cost),
     };
     if j.shed_mw > 0.0 || j.least_shed_mw > 0.005 {
-        let _ = writeln!(
-            out,
-            "  Shed {:.2} MW, least {:.2} MW",
-            j.shed_mw, j.least_shed_mw
-        );
+        let _ = writeln!(out, "  Shed {:.2} MW, least {:.2} MW", j.shed_mw, j.least_shed_mw);
     }
     for f in j.facts.iter().filter(|f| f.name != "rung") {
         let mark = if f.met { "met   " } else { "BROKEN" };

@@ -179,17 +179,11 @@ pub(super) fn ticks(low: f64, high: f64, about: usize) -> Vec<f64> {
     }
     let raw = span / about.max(1) as f64;
     let power = 10f64.powf(raw.log10().floor());
-    let step = [1.0, 2.0, 5.0, 10.0]
-        .iter()
-        .map(|m| m * power)
-        .find(|s| *s >= raw)
-        .unwrap_or(raw);
+    let step = [1.0, 2.0, 5.0, 10.0].iter().map(|m| m * power).find(|s| *s >= raw).unwrap_or(raw);
     let first = (low / step - 1e-9).ceil() as i64;
     let last = (high / step + 1e-9).floor() as i64;
     // At most `about + 1` ticks by the choice of the step; the bound guards rounding.
-    (first..=last.min(first + 4 * about as i64))
-        .map(|i| i as f64 * step)
-        .collect()
+    (first..=last.min(first + 4 * about as i64)).map(|i| i as f64 * step).collect()
 }
 
 /// Decimals that tell neighbouring ticks apart.
@@ -231,16 +225,12 @@ fn append(out: &mut Vec<(f64, f64)>, point: (f64, f64)) {
 
 fn flush(column: &mut Vec<(f64, f64)>, out: &mut Vec<(f64, f64)>) {
     let by = |a: &&(f64, f64), b: &&(f64, f64)| a.1.total_cmp(&b.1);
-    let mut kept: Vec<(f64, f64)> = [
-        column.first(),
-        column.iter().min_by(by),
-        column.iter().max_by(by),
-        column.last(),
-    ]
-    .into_iter()
-    .flatten()
-    .copied()
-    .collect();
+    let mut kept: Vec<(f64, f64)> =
+        [column.first(), column.iter().min_by(by), column.iter().max_by(by), column.last()]
+            .into_iter()
+            .flatten()
+            .copied()
+            .collect();
     kept.sort_by(|a, b| a.0.total_cmp(&b.0));
     kept.dedup();
     kept.into_iter().for_each(|p| append(out, p));

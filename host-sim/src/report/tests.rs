@@ -12,11 +12,7 @@ fn with_bundle<T>(change: impl Fn(&mut Recording), check: impl Fn(&Bundle) -> T)
     droop.scheme = Scheme::Droop;
     let droop_judgement = judge(&grid, &play, &droop);
     let others = [(droop, droop_judgement)];
-    let meta = Meta {
-        version: "0.1.0".into(),
-        run_wall_s: 1.0,
-        judge_wall_s: 0.1,
-    };
+    let meta = Meta { version: "0.1.0".into(), run_wall_s: 1.0, judge_wall_s: 0.1 };
     let bundle = Bundle {
         grid: &grid,
         play: &play,
@@ -53,10 +49,7 @@ fn json_has_the_promised_fields() {
             assert_eq!(v["areas"][0]["verdict"], "settled");
             assert_eq!(v["areas"][1]["frames"]["sent"], 600);
             assert_eq!(v["events"][0]["text"], "line A1-A2 opens");
-            assert_eq!(
-                v["judge"]["least_rung"],
-                serde_json::json!(["keep", "keep"])
-            );
+            assert_eq!(v["judge"]["least_rung"], serde_json::json!(["keep", "keep"]));
             assert_eq!(v["compare"][0]["scheme"], "droop");
             assert_eq!(v["meta"]["version"], "0.1.0");
         },
@@ -78,10 +71,8 @@ fn broken_runs_say_why_in_every_format() {
 fn the_summary_fits_80_columns_and_has_no_escape_codes_unless_asked() {
     let change = |run: &mut Recording| {
         for i in 0..60 {
-            run.story.push(crate::record::Told {
-                at_s: f64::from(i),
-                text: "a long tale ".repeat(12),
-            });
+            run.story
+                .push(crate::record::Told { at_s: f64::from(i), text: "a long tale ".repeat(12) });
         }
         run.proofs.push(sample::proof(1, 2.0, true));
     };
@@ -122,11 +113,7 @@ fn the_page_escapes_names_and_needs_no_network() {
             assert!(!page.contains("Two <areas>"));
             assert!(page.contains("Two &lt;areas&gt;"));
             assert!(!page.contains("<script"));
-            assert!(
-                !page
-                    .replace("http://www.w3.org/2000/svg", "")
-                    .contains("http")
-            );
+            assert!(!page.replace("http://www.w3.org/2000/svg", "").contains("http"));
         },
     );
 }
@@ -138,20 +125,12 @@ fn csv_has_a_row_per_sample_and_a_unit_per_column() {
         |bundle| {
             let text = csv::trace(bundle.grid, bundle.recording).unwrap();
             let mut reader = ::csv::Reader::from_reader(text.as_bytes());
-            let head: Vec<String> = reader
-                .headers()
-                .unwrap()
-                .iter()
-                .map(str::to_owned)
-                .collect();
+            let head: Vec<String> = reader.headers().unwrap().iter().map(str::to_owned).collect();
             for name in &head {
                 let known = ["_s", "_hz", "_mw", "_percent", " rung", " verdict"];
                 assert!(known.iter().any(|k| name.ends_with(k)), "{name}");
             }
-            let column = head
-                .iter()
-                .position(|h| h == "line A1-A2 loading_percent")
-                .unwrap();
+            let column = head.iter().position(|h| h == "line A1-A2 loading_percent").unwrap();
             let rows: Vec<_> = reader.records().map(Result::unwrap).collect();
             assert_eq!(rows.len(), 301);
             assert_eq!(&rows[0][column], "50");
@@ -166,11 +145,7 @@ fn a_picture_does_not_grow_with_the_run() {
     let s = &mut run.series;
     let n = 60_000;
     s.times_s = (0..n).map(|i| f64::from(i) * 0.1).collect();
-    for table in [
-        &mut s.area_freq_dev_hz,
-        &mut s.line_flow_mw,
-        &mut s.unit_setpoint_mw,
-    ] {
+    for table in [&mut s.area_freq_dev_hz, &mut s.line_flow_mw, &mut s.unit_setpoint_mw] {
         for values in table.iter_mut() {
             *values = (0..n).map(|i| f64::from(i % 97)).collect();
         }
@@ -190,15 +165,8 @@ fn reduction_keeps_the_extremes_of_each_pixel_column() {
 
 #[test]
 fn ticks_are_round_and_inside_the_range() {
-    assert_eq!(
-        svg::ticks(0.0, 30.0, 6),
-        [0.0, 5.0, 10.0, 15.0, 20.0, 25.0, 30.0]
-    );
-    assert!(
-        svg::ticks(49.8, 50.02, 4)
-            .iter()
-            .all(|t| (49.8..=50.02).contains(t))
-    );
+    assert_eq!(svg::ticks(0.0, 30.0, 6), [0.0, 5.0, 10.0, 15.0, 20.0, 25.0, 30.0]);
+    assert!(svg::ticks(49.8, 50.02, 4).iter().all(|t| (49.8..=50.02).contains(t)));
     assert_eq!(svg::ticks(1.0, 1.0, 4), [1.0]);
 }
 
@@ -216,9 +184,7 @@ fn a_map_without_positions_still_places_every_bus() {
     grid.buses.iter_mut().for_each(|b| b.position = None);
     let drawn = map::svg(&grid, &run.end);
     assert!(!drawn.contains("NaN") && !drawn.contains("inf"));
-    grid.buses
-        .iter()
-        .for_each(|b| assert!(drawn.contains(&format!(">{}</text>", b.name))));
+    grid.buses.iter().for_each(|b| assert!(drawn.contains(&format!(">{}</text>", b.name))));
 }
 
 #[test]
@@ -239,10 +205,7 @@ fn refuses_a_directory_with_files_unless_told() {
             assert!(write_all(&dir, bundle, Existing::Refuse).is_err());
         },
     );
-    assert_eq!(
-        std::fs::read_to_string(dir.join("thesis.tex")).unwrap(),
-        "mine"
-    );
+    assert_eq!(std::fs::read_to_string(dir.join("thesis.tex")).unwrap(), "mine");
     std::fs::remove_dir_all(&dir).unwrap();
 }
 

@@ -23,18 +23,12 @@ pub struct Reading {
 impl Reading {
     /// A reading taken in this tick.
     pub const fn fresh(value: f32) -> Self {
-        Self {
-            value,
-            age_ticks: 0,
-        }
+        Self { value, age_ticks: 0 }
     }
 
     /// No value.
     pub const fn missing() -> Self {
-        Self {
-            value: 0.0,
-            age_ticks: AGE_MISSING,
-        }
+        Self { value: 0.0, age_ticks: AGE_MISSING }
     }
 
     /// The value if it is finite, not older than `age_ticks_max` and within `limit` of zero.
@@ -70,14 +64,10 @@ impl<'a> Readings<'a> {
 
     /// The readings in order.
     pub fn iter(self) -> impl Iterator<Item = Reading> + Clone + 'a {
-        self.0
-            .as_chunks::<READING_BYTES>()
-            .0
-            .iter()
-            .map(|&[a, b, c, d, age_ticks]| Reading {
-                value: f32::from_le_bytes([a, b, c, d]),
-                age_ticks,
-            })
+        self.0.as_chunks::<READING_BYTES>().0.iter().map(|&[a, b, c, d, age_ticks]| Reading {
+            value: f32::from_le_bytes([a, b, c, d]),
+            age_ticks,
+        })
     }
 }
 
@@ -120,11 +110,7 @@ impl<'a> Floats<'a> {
 
     /// The values in order.
     pub fn iter(self) -> impl Iterator<Item = f32> + Clone + 'a {
-        self.0
-            .as_chunks::<4>()
-            .0
-            .iter()
-            .map(|&bytes| f32::from_le_bytes(bytes))
+        self.0.as_chunks::<4>().0.iter().map(|&bytes| f32::from_le_bytes(bytes))
     }
 }
 
@@ -152,9 +138,7 @@ pub struct Bits<'a>(#[serde(borrow)] pub &'a [u8]);
 impl Bits<'_> {
     /// Flag `index`, or none beyond the end.
     pub fn get(self, index: usize) -> Option<bool> {
-        self.0
-            .get(index / 8)
-            .map(|byte| byte >> (index % 8) & 1 == 1)
+        self.0.get(index / 8).map(|byte| byte >> (index % 8) & 1 == 1)
     }
 
     /// Whether there are bytes for `count` flags, and no more.

@@ -12,14 +12,7 @@ fn key() -> Key {
 }
 
 fn some_header() -> Header {
-    Header {
-        id: 0,
-        from: 1,
-        to: 2,
-        boot_id: 3,
-        peer_boot_id: 4,
-        counter: 5,
-    }
+    Header { id: 0, from: 1, to: 2, boot_id: 3, peer_boot_id: 4, counter: 5 }
 }
 
 /// A raw frame with these header and payload bytes and a right checksum; the
@@ -50,10 +43,7 @@ fn checks_come_in_their_order() {
     let wrong_tag = forged([PROTOCOL_VERSION, 0xEE, 1, 2], &[9], &other);
     assert_eq!(frame::open(&wrong_tag, &key()), Err(FrameError::Tag));
     let wrong_version = forged([7, 0xEE, 1, 2], &[9], &other);
-    assert_eq!(
-        frame::open(&wrong_version, &key()),
-        Err(FrameError::Version(7))
-    );
+    assert_eq!(frame::open(&wrong_version, &key()), Err(FrameError::Version(7)));
     let mut wrong_sum = wrong_version;
     wrong_sum[5] ^= 1;
     assert_eq!(frame::open(&wrong_sum, &key()), Err(FrameError::Checksum));
@@ -74,11 +64,7 @@ fn authentic_frames_with_a_wrong_payload_are_refused() {
     assert_eq!(open(5, &[]), malformed, "missing");
     assert_eq!(open(5, &[9, 9]), malformed, "left over");
     // Tick, two lists of floats and one of bits; the first list is 3 bytes long.
-    assert_eq!(
-        open(0x20, &[7, 3, 1, 2, 3, 0, 0]),
-        malformed,
-        "partial float"
-    );
+    assert_eq!(open(0x20, &[7, 3, 1, 2, 3, 0, 0]), malformed, "partial float");
     assert_eq!(open(0x20, &[7, 4, 1, 2, 3, 4, 0, 0]), Ok(0x20));
     let unknown = Err(FrameError::Payload(PayloadError::UnknownId(0x7F)));
     assert_eq!(open(0x7F, &[9]), unknown);
@@ -125,10 +111,7 @@ fn refuses_to_seal_what_no_receiver_takes() {
 #[test]
 fn peek_needs_a_header_and_nothing_else() {
     let (raw, _) = sealed(&some_header(), &Message::Stop(Stop { tick: 1 }));
-    let header = Header {
-        id: 5,
-        ..some_header()
-    };
+    let header = Header { id: 5, ..some_header() };
     assert_eq!(frame::peek(&raw[..HEADER_BYTES]), Some(header));
     assert_eq!(frame::peek(&raw[..HEADER_BYTES - 1]), None);
 }

@@ -30,13 +30,7 @@ pub struct Parts {
 pub fn parts(longest: usize) -> impl Strategy<Value = Parts> {
     let packed =
         move |size| vec(vec(any::<u8>(), size), 0..=longest).prop_map(|elements| elements.concat());
-    let numbers = (
-        0..KINDS,
-        any::<[u8; 3]>(),
-        any::<[u16; 3]>(),
-        any::<[u32; 3]>(),
-        any::<u64>(),
-    );
+    let numbers = (0..KINDS, any::<[u8; 3]>(), any::<[u16; 3]>(), any::<[u32; 3]>(), any::<u64>());
     let fixed = ("[a-z0-9é-]{0,24}", any::<[u8; 16]>(), any::<[f32; 6]>());
     let lists = (
         proptest::array::uniform6(packed(5)),
@@ -45,19 +39,7 @@ pub fn parts(longest: usize) -> impl Strategy<Value = Parts> {
     );
     (numbers, fixed, lists).prop_map(
         |((kind, small, middle, large, huge), (name, hash, floats), (readings, lists, bits))| {
-            Parts {
-                kind,
-                small,
-                middle,
-                large,
-                huge,
-                name,
-                hash,
-                floats,
-                readings,
-                lists,
-                bits,
-            }
+            Parts { kind, small, middle, large, huge, name, hash, floats, readings, lists, bits }
         },
     )
 }
@@ -73,11 +55,7 @@ impl Parts {
         let [d, e, _] = self.middle;
         Some(match self.kind {
             0 => Message::Hello(Hello {
-                role: if a % 2 == 0 {
-                    Role::Plant
-                } else {
-                    Role::Steward
-                },
+                role: if a % 2 == 0 { Role::Plant } else { Role::Steward },
                 protocol: b,
                 version: self.small,
                 core: &self.name,
@@ -87,11 +65,7 @@ impl Parts {
                 charter: self.hash,
                 last_fault: a,
             }),
-            1 => Message::CharterPart(CharterPart {
-                offset: d,
-                total: e,
-                bytes: &self.bits[0],
-            }),
+            1 => Message::CharterPart(CharterPart { offset: d, total: e, bytes: &self.bits[0] }),
             2 => Message::CharterState(CharterState {
                 received: d,
                 hash: self.hash,
@@ -107,9 +81,7 @@ impl Parts {
                 ][usize::from(a % 8)],
             }),
             3 => Message::Run(Run { charter: self.hash }),
-            4 => Message::Stop(Stop {
-                tick: self.large[0],
-            }),
+            4 => Message::Stop(Stop { tick: self.large[0] }),
             _ => return None,
         })
     }
@@ -119,16 +91,8 @@ impl Parts {
         let [tick, ramp_ticks, _] = self.large;
         match self.kind {
             5 => Message::Measurements(self.measurements()),
-            6 => Message::Schedule(Schedule {
-                tie: a,
-                export_mw: self.floats[0],
-                ramp_ticks,
-            }),
-            7 => Message::BasePoint(BasePoint {
-                unit: a,
-                base_mw: self.floats[0],
-                ramp_ticks,
-            }),
+            6 => Message::Schedule(Schedule { tie: a, export_mw: self.floats[0], ramp_ticks }),
+            7 => Message::BasePoint(BasePoint { unit: a, base_mw: self.floats[0], ramp_ticks }),
             8 => Message::Restore(Restore { tick }),
             9 => Message::Orders(Orders {
                 tick,
@@ -169,12 +133,8 @@ impl Parts {
         Status {
             tick,
             rung: self.rung(),
-            verdict: [
-                Verdict::Settled,
-                Verdict::Working,
-                Verdict::Impossible,
-                Verdict::Blind,
-            ][usize::from(self.small[1] % 4)],
+            verdict: [Verdict::Settled, Verdict::Working, Verdict::Impossible, Verdict::Blind]
+                [usize::from(self.small[1] % 4)],
             proven_mw,
             load_mw,
             shed_mw,

@@ -137,30 +137,18 @@ fn largest_others() -> Vec<Message<'static>> {
 fn every_other_message_fits_a_small_buffer_and_parts_their_limit() {
     for message in largest_others() {
         let (raw, wire) = sealed(&header(), &message);
-        assert!(
-            wire.len() <= SMALL_WIRE,
-            "{} bytes: {message:?}",
-            wire.len()
-        );
+        assert!(wire.len() <= SMALL_WIRE, "{} bytes: {message:?}", wire.len());
         let is_part = matches!(message, Message::CharterPart(_) | Message::ProofPart(_));
         let payload = raw.len() - OVERHEAD_BYTES;
         // A proof part may leave up to three bytes of its last float free.
-        assert_eq!(
-            is_part,
-            (PART_MAX - 3..=PART_MAX).contains(&payload),
-            "{message:?}"
-        );
+        assert_eq!(is_part, (PART_MAX - 3..=PART_MAX).contains(&payload), "{message:?}");
     }
 }
 
 /// Check that `value` becomes these bytes and comes back.
 fn both_ways<'a, T: Serialize + Deserialize<'a> + PartialEq + Debug>(value: T, bytes: &'a [u8]) {
     let mut out = [0; 64];
-    assert_eq!(
-        postcard::to_slice(&value, &mut out).unwrap(),
-        bytes,
-        "{value:?}"
-    );
+    assert_eq!(postcard::to_slice(&value, &mut out).unwrap(), bytes, "{value:?}");
     assert_eq!(postcard::from_bytes::<T>(bytes).unwrap(), value);
 }
 
@@ -181,21 +169,14 @@ fn fields_are_coded_as_the_published_format_says() {
     both_ways(127u32, &[0x7F]);
     both_ways(2_097_151u32, &[0xFF, 0xFF, 0x7F]);
     both_ways(u32::MAX, &[0xFF, 0xFF, 0xFF, 0xFF, 0x0F]);
-    both_ways(
-        u64::MAX,
-        &[0xFF, 0xFF, 0xFF, 0xFF, 0xFF, 0xFF, 0xFF, 0xFF, 0xFF, 0x01],
-    );
+    both_ways(u64::MAX, &[0xFF, 0xFF, 0xFF, 0xFF, 0xFF, 0xFF, 0xFF, 0xFF, 0xFF, 0x01]);
     both_ways(-32.005_86f32, &[0x00, 0x06, 0x00, 0xC2]);
     both_ways(1.0f32, &[0x00, 0x00, 0x80, 0x3F]);
     both_ways("hello", b"\x05hello");
     both_ways("é", &[0x02, 0xC3, 0xA9]);
     both_ways(None::<u8>, &[0x00]);
     both_ways(Some(0u8), &[0x01, 0x00]);
-    let mixed = Mixed {
-        flag: (true, 9),
-        list: [1, 128, 300],
-        some: None,
-    };
+    let mixed = Mixed { flag: (true, 9), list: [1, 128, 300], some: None };
     both_ways(mixed, &[1, 9, 0x01, 0x80, 0x01, 0xAC, 0x02, 0]);
 }
 
@@ -208,14 +189,10 @@ fn enum_numbers_are_frozen() {
     for (number, vector) in ProofVector::ALL.into_iter().enumerate() {
         both_ways(vector, &[number as u8]);
     }
-    for (number, verdict) in [
-        Verdict::Settled,
-        Verdict::Working,
-        Verdict::Impossible,
-        Verdict::Blind,
-    ]
-    .into_iter()
-    .enumerate()
+    for (number, verdict) in
+        [Verdict::Settled, Verdict::Working, Verdict::Impossible, Verdict::Blind]
+            .into_iter()
+            .enumerate()
     {
         both_ways(verdict, &[number as u8]);
     }

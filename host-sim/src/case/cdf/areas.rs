@@ -67,8 +67,5 @@ fn neighbour(part: &[usize], area_of: &[i64], lines: &[Line]) -> Option<i64> {
         *counts.entry(area_of[other]).or_insert(0usize) += 1;
     }
     let most = counts.values().copied().max()?;
-    counts
-        .into_iter()
-        .find(|&(_, count)| count == most)
-        .map(|(area, _)| area)
+    counts.into_iter().find(|&(_, count)| count == most).map(|(area, _)| area)
 }

@@ -69,16 +69,11 @@ pub(super) fn convert(mut case: Case) -> Result<Network, String> {
     let mut lines = convert_lines(&case, &mut rules);
     turn_negatives(&mut case.buses, &mut rules);
     balance(&mut case.buses, &mut rules);
-    let injection_pu: Vec<f64> = case
-        .buses
-        .iter()
-        .map(|bus| (bus.generation_mw - bus.load_mw) / case.base_mva)
-        .collect();
+    let injection_pu: Vec<f64> =
+        case.buses.iter().map(|bus| (bus.generation_mw - bus.load_mw) / case.base_mva).collect();
     rate(&mut lines, &case, &injection_pu, &mut rules)?;
     let mut area_of: Vec<i64> = case.buses.iter().map(|bus| bus.area).collect();
-    rules.extend(join_pieces(&mut area_of, &lines, |bus| {
-        name_of(&case.buses[bus])
-    }));
+    rules.extend(join_pieces(&mut area_of, &lines, |bus| name_of(&case.buses[bus])));
     let units = convert_units(&case.buses, &mut rules);
     rules.push(
         "the format states no frequency: 60 Hz, since it comes from North America".to_owned(),
@@ -92,11 +87,7 @@ pub(super) fn convert(mut case: Case) -> Result<Network, String> {
     numbers.dedup();
     let area_name = |number: &i64| format!("Area {number}");
     Ok(Network {
-        title: if case.title.is_empty() {
-            "Imported grid".to_owned()
-        } else {
-            case.title.clone()
-        },
+        title: if case.title.is_empty() { "Imported grid".to_owned() } else { case.title.clone() },
         base_mva: case.base_mva,
         areas: numbers.iter().map(area_name).collect(),
         buses: case
@@ -134,30 +125,17 @@ fn convert_lines(case: &Case, rules: &mut Vec<String>) -> Vec<Line> {
             loops += 1;
             continue;
         }
-        let plain = format!(
-            "{}-{}",
-            name_of(&case.buses[branch.from]),
-            name_of(&case.buses[branch.to])
-        );
-        let twins = lines
-            .iter()
-            .filter(|line| (line.from, line.to) == (branch.from, branch.to))
-            .count();
+        let plain =
+            format!("{}-{}", name_of(&case.buses[branch.from]), name_of(&case.buses[branch.to]));
+        let twins =
+            lines.iter().filter(|line| (line.from, line.to) == (branch.from, branch.to)).count();
         parallel += usize::from(twins > 0);
         zeros += usize::from(branch.reactance_pu == 0.0);
         lines.push(Line {
-            name: if twins == 0 {
-                plain
-            } else {
-                format!("{plain} #{}", twins + 1)
-            },
+            name: if twins == 0 { plain } else { format!("{plain} #{}", twins + 1) },
             from: branch.from,
             to: branch.to,
-            reactance_pu: if branch.reactance_pu == 0.0 {
-                BUS_TIE_PU
-            } else {
-                branch.reactance_pu
-            },
+            reactance_pu: if branch.reactance_pu == 0.0 { BUS_TIE_PU } else { branch.reactance_pu },
             rating_mw: branch.rating_mw,
             rating_short_mw: None,
             rating_short_min: None,
@@ -177,49 +155,27 @@ fn remark(
     [loops, zeros, parallel]: [usize; 3],
     rules: &mut Vec<String>,
 ) {
-    let taps = case
-        .branches
-        .iter()
-        .filter(|branch| branch.ratio != 0.0 && branch.ratio != 1.0)
-        .count();
-    let shifts = case
-        .branches
-        .iter()
-        .filter(|branch| branch.shift_deg != 0.0)
-        .count();
+    let taps =
+        case.branches.iter().filter(|branch| branch.ratio != 0.0 && branch.ratio != 1.0).count();
+    let shifts = case.branches.iter().filter(|branch| branch.shift_deg != 0.0).count();
     let negatives = lines.iter().filter(|line| line.reactance_pu < 0.0).count();
     let mut say = |count: usize, sentence: &str| {
         if count > 0 {
-            rules.push(format!(
-                "{}{sentence}",
-                counted(count, "branch", "branches")
-            ));
+            rules.push(format!("{}{sentence}", counted(count, "branch", "branches")));
         }
     };
-    say(
-        taps,
-        " with a ratio other than 1: ignored, plain DC takes the reactance as it is",
-    );
-    say(
-        shifts,
-        " with a phase shift: ignored, the model has no phase shifters",
-    );
+    say(taps, " with a ratio other than 1: ignored, plain DC takes the reactance as it is");
+    say(shifts, " with a phase shift: ignored, the model has no phase shifters");
     say(loops, " that would end at the same bus: left out");
     say(zeros, " without reactance: 0.0001 pu stands in");
-    say(
-        negatives,
-        " with negative reactance: kept, allowed inside an area only",
-    );
+    say(negatives, " with negative reactance: kept, allowed inside an area only");
     say(parallel, " beside another one: named with #2 and so on");
 }
 
 /// Negative generation becomes load; negative load becomes generation.
 fn turn_negatives(buses: &mut [BusRecord], rules: &mut Vec<String>) {
     let (mut sinks, mut sinks_mw) = (0, 0.0);
-    for bus in buses
-        .iter_mut()
-        .filter(|bus| !bus.is_slack && bus.generation_mw < 0.0)
-    {
+    for bus in buses.iter_mut().filter(|bus| !bus.is_slack && bus.generation_mw < 0.0) {
         sinks += 1;
         sinks_mw -= bus.generation_mw;
         bus.load_mw -= bus.generation_mw;
@@ -264,10 +220,7 @@ fn balance(buses: &mut [BusRecord], rules: &mut Vec<String>) {
     if bus.generation_mw < 0.0 {
         bus.load_mw -= bus.generation_mw;
         bus.generation_mw = 0.0;
-        rules.push(format!(
-            "that is negative, so it became load at {}",
-            name_of(bus)
-        ));
+        rules.push(format!("that is negative, so it became load at {}", name_of(bus)));
     }
 }
 
@@ -280,10 +233,8 @@ fn rate(
 ) -> Result<(), String> {
     let flows_pu = base_flows_pu(injection_pu, lines)
         .ok_or("the network has no unique flow: it is in pieces, or reactances cancel")?;
-    let largest_mw = flows_pu
-        .iter()
-        .fold(0.0, |most: f64, flow| most.max(flow.abs()))
-        * case.base_mva;
+    let largest_mw =
+        flows_pu.iter().fold(0.0, |most: f64, flow| most.max(flow.abs())) * case.base_mva;
     let mut own = 0;
     for (line, flow_pu) in lines.iter_mut().zip(&flows_pu) {
         let flow_mw = flow_pu.abs() * case.base_mva;
@@ -326,12 +277,7 @@ fn convert_units(buses: &[BusRecord], rules: &mut Vec<String>) -> Vec<NetworkUni
         }
         if bus.load_mw < -SOME_MW {
             let name = format!("E{}", bus.number);
-            units.push(NetworkUnit {
-                name,
-                bus: name_of(bus),
-                base_mw: -bus.load_mw,
-                fixed: true,
-            });
+            units.push(NetworkUnit { name, bus: name_of(bus), base_mw: -bus.load_mw, fixed: true });
         }
     }
     let embedded = units.iter().filter(|unit| unit.fixed).count();

@@ -39,10 +39,7 @@ pub fn import(bytes: &[u8], file_name: &str) -> Result<Imported, Problems> {
     })?;
     let text = write::write(&network);
     super::parse_grid(&text, &format!("{file_name} (as a grid)"))?;
-    Ok(Imported {
-        text,
-        rules: network.rules,
-    })
+    Ok(Imported { text, rules: network.rules })
 }
 
 #[cfg(test)]

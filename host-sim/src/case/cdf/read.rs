@@ -58,17 +58,10 @@ struct Card<'t> {
 impl<'t> Card<'t> {
     /// Columns `first` to `last`, counted from 1, as far as the line goes.
     fn cut(self, first: usize, last: usize) -> (&'t str, Range<usize>) {
-        let at = |count: usize| {
-            self.text
-                .char_indices()
-                .nth(count)
-                .map_or(self.text.len(), |(i, _)| i)
-        };
+        let at =
+            |count: usize| self.text.char_indices().nth(count).map_or(self.text.len(), |(i, _)| i);
         let (from, to) = (at(first - 1), at(last));
-        (
-            self.text[from..to].trim(),
-            self.start + from..self.start + to,
-        )
+        (self.text[from..to].trim(), self.start + from..self.start + to)
     }
 
     /// The whole line.
@@ -109,10 +102,7 @@ fn cards(source: &str) -> Vec<Card<'_>> {
     source
         .split_inclusive('\n')
         .map(|line| {
-            let card = Card {
-                text: line.trim_end_matches(['\n', '\r']),
-                start,
-            };
+            let card = Card { text: line.trim_end_matches(['\n', '\r']), start };
             start += line.len();
             card
         })
@@ -142,15 +132,8 @@ pub(super) fn read(source: &str) -> Result<Case, Vec<Problem>> {
 
 /// The title is the last line before the buses; some files put a `TAPE` line above it.
 fn read_title(cards: &[Card<'_>], case: &mut Case, log: &mut Vec<Problem>) {
-    let buses = cards
-        .iter()
-        .position(|card| heads(card, "BUS DATA FOLLOWS"))
-        .unwrap_or(0);
-    let Some(title) = cards[..buses]
-        .iter()
-        .rev()
-        .find(|card| !card.text.trim().is_empty())
-    else {
+    let buses = cards.iter().position(|card| heads(card, "BUS DATA FOLLOWS")).unwrap_or(0);
+    let Some(title) = cards[..buses].iter().rev().find(|card| !card.text.trim().is_empty()) else {
         let problem = Problem::new(0..0, "no title line before `BUS DATA FOLLOWS`")
             .right("a Common Data Format file begins with a title that gives the MVA base in columns 32 to 37");
         log.push(problem);
@@ -167,10 +150,7 @@ fn read_title(cards: &[Card<'_>], case: &mut Case, log: &mut Vec<Problem>) {
 
 /// Whether a line is the heading of a section.
 fn heads(card: &Card<'_>, heading: &str) -> bool {
-    card.text
-        .trim_start()
-        .to_ascii_uppercase()
-        .starts_with(heading)
+    card.text.trim_start().to_ascii_uppercase().starts_with(heading)
 }
 
 /// The records of a section; its heading's count is a remark, not a rule.
@@ -187,19 +167,13 @@ fn section<'t>(
     let rest = &cards[at + 1..];
     let ends = |card: &Card<'_>| card.text.trim_start().starts_with("-999");
     let Some(end) = rest.iter().position(ends) else {
-        let problem = Problem::new(
-            cards[at].span(),
-            format!("section `{heading}` does not end"),
-        )
-        .right("a section ends with a line that begins with -999; the file may be cut off");
+        let problem = Problem::new(cards[at].span(), format!("section `{heading}` does not end"))
+            .right("a section ends with a line that begins with -999; the file may be cut off");
         log.push(problem);
         return Vec::new();
     };
-    let records: Vec<Card<'t>> = rest[..end]
-        .iter()
-        .copied()
-        .filter(|card| !card.text.trim().is_empty())
-        .collect();
+    let records: Vec<Card<'t>> =
+        rest[..end].iter().copied().filter(|card| !card.text.trim().is_empty()).collect();
     let words = cards[at].text.split_whitespace();
     let promised = words.filter_map(|word| word.parse::<usize>().ok()).next();
     if let Some(count) = promised.filter(|&count| count != records.len()) {
@@ -227,10 +201,7 @@ fn read_bus(card: Card<'_>, case: &mut Case, log: &mut Vec<Problem>) {
             Problem::new(span, "a bus number must be above 0").found(format!("this is {number}")),
         );
     } else if case.buses.iter().any(|other| other.number == number) {
-        log.push(Problem::new(
-            span,
-            format!("two buses have the number {number}"),
-        ));
+        log.push(Problem::new(span, format!("two buses have the number {number}")));
     }
     case.buses.push(bus);
 }

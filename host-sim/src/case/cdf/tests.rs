@@ -6,10 +6,7 @@ use super::{Imported, import};
 
 /// A title in its columns.
 fn title(base_mva: &str, name: &str) -> String {
-    format!(
-        " 01/02/03 {:<20} {base_mva:>6}  1973 W {name}\r\n",
-        "WRITTEN HERE"
-    )
+    format!(" 01/02/03 {:<20} {base_mva:>6}  1973 W {name}\r\n", "WRITTEN HERE")
 }
 
 /// A bus record: number, name, area, type, load, generation.
@@ -47,10 +44,7 @@ fn row() -> (Vec<String>, Vec<String>) {
             bus(2, "Bus 2     LV", 1, 0, "40.0", "0.0"),
             bus(9533, "", 1, 0, "60.0", "0.0"),
         ],
-        vec![
-            branch(1, 2, "0.1", "", "0.0", ""),
-            branch(2, 9533, "0.2", "", "0.0", ""),
-        ],
+        vec![branch(1, 2, "0.1", "", "0.0", ""), branch(2, 9533, "0.2", "", "0.0", "")],
     )
 }
 
@@ -58,10 +52,7 @@ fn row() -> (Vec<String>, Vec<String>) {
 fn imported(source: &str) -> (Grid, Imported) {
     let imported =
         import(source.as_bytes(), "case.cdf").unwrap_or_else(|problems| panic!("{problems}"));
-    (
-        parse_grid(&imported.text, "case.grid.toml").expect("it reads back"),
-        imported,
-    )
+    (parse_grid(&imported.text, "case.grid.toml").expect("it reads back"), imported)
 }
 
 /// The rows with changed records, imported.
@@ -84,24 +75,14 @@ fn reads_records_by_column_with_cr_lf_and_sparse_numbers() {
     );
     let names: Vec<&str> = grid.buses.iter().map(|bus| bus.name.as_str()).collect();
     assert_eq!(names, ["B1", "B2", "B9533"]);
-    assert_eq!(
-        (
-            grid.lines[1].from,
-            grid.lines[1].to,
-            grid.lines[1].reactance_pu
-        ),
-        (1, 2, 0.2)
-    );
+    assert_eq!((grid.lines[1].from, grid.lines[1].to, grid.lines[1].reactance_pu), (1, 2, 0.2));
 }
 
 #[test]
 fn sets_the_slack_generation_to_the_lossless_balance_and_says_so() {
     let (grid, imported) = imported(&changed(|_, _| {}));
     assert_eq!((grid.units.len(), grid.units[0].base_mw), (1, 100.0));
-    assert!(says(
-        &imported,
-        "the slack bus, B1, generates 100.000 MW instead of 103.5 MW"
-    ));
+    assert!(says(&imported, "the slack bus, B1, generates 100.000 MW instead of 103.5 MW"));
 }
 
 #[test]
@@ -122,14 +103,8 @@ fn keeps_a_rating_of_the_file_above_the_base_flow_only() {
         branches[0] = branch(1, 2, "0.1", "120", "", "");
         branches[1] = branch(2, 9533, "0.2", "50", "", "");
     }));
-    assert_eq!(
-        (grid.lines[0].rating_mw, grid.lines[1].rating_mw),
-        (120.0, 90.0)
-    );
-    assert!(says(
-        &imported,
-        "1 branch with a first rating above the base flow"
-    ));
+    assert_eq!((grid.lines[0].rating_mw, grid.lines[1].rating_mw), (120.0, 90.0));
+    assert!(says(&imported, "1 branch with a first rating above the base flow"));
 }
 
 #[test]
@@ -169,10 +144,8 @@ fn reads_lines_that_end_early_or_run_on() {
     let source = changed(|buses, branches| {
         let short = branches[0].trim_end()[..45].to_owned();
         branches[0] = format!("{short}\r\n");
-        buses[0] = buses[0].replace(
-            "\r\n",
-            "      0.0       0.0        0   tail one column off\r\n",
-        );
+        buses[0] =
+            buses[0].replace("\r\n", "      0.0       0.0        0   tail one column off\r\n");
     });
     assert_eq!(imported(&source).0.lines[0].reactance_pu, 0.1);
 }
@@ -189,11 +162,7 @@ fn ignores_ratios_and_shifts_and_says_so_but_takes_zero_for_one() {
 #[test]
 fn keeps_digits_and_blanks_of_a_name_as_a_remark() {
     let (_, imported) = imported(&changed(|_, _| {}));
-    assert!(
-        imported
-            .text
-            .contains("# Bus 1     HV\n[[bus]]\nname = \"B1\"")
-    );
+    assert!(imported.text.contains("# Bus 1     HV\n[[bus]]\nname = \"B1\""));
 }
 
 #[test]
@@ -203,31 +172,17 @@ fn turns_negative_generation_into_load_and_negative_load_into_fixed_generation()
         buses[2] = bus(9533, "", 1, 0, "-5.0", "0.0");
     }));
     assert_eq!(grid.buses[1].load_mw, 19.0);
-    let embedded = grid
-        .units
-        .iter()
-        .find(|unit| unit.name == "E9533")
-        .expect("a unit");
-    assert_eq!(
-        (embedded.status, embedded.base_mw),
-        (UnitStatus::Fixed, 5.0)
-    );
-    assert!(says(
-        &imported,
-        "1 bus with negative generation: 9.00 MW became load"
-    ));
+    let embedded = grid.units.iter().find(|unit| unit.name == "E9533").expect("a unit");
+    assert_eq!((embedded.status, embedded.base_mw), (UnitStatus::Fixed, 5.0));
+    assert!(says(&imported, "1 bus with negative generation: 9.00 MW became load"));
     assert!(says(&imported, "1 bus with negative load"));
 }
 
 #[test]
 fn names_parallel_branches_apart() {
-    let (grid, _) = imported(&changed(|_, branches| {
-        branches.push(branch(1, 2, "0.1", "", "", ""))
-    }));
-    assert_eq!(
-        (grid.lines[0].name.as_str(), grid.lines[2].name.as_str()),
-        ("B1-B2", "B1-B2 #2")
-    );
+    let (grid, _) =
+        imported(&changed(|_, branches| branches.push(branch(1, 2, "0.1", "", "", ""))));
+    assert_eq!((grid.lines[0].name.as_str(), grid.lines[2].name.as_str()), ("B1-B2", "B1-B2 #2"));
 }
 
 #[test]
@@ -236,10 +191,7 @@ fn keeps_negative_reactance_and_stands_in_for_none() {
         branches[0] = branch(1, 2, "-0.3697", "", "", "");
         branches[1] = branch(2, 9533, "0.0", "", "", "");
     }));
-    assert_eq!(
-        (grid.lines[0].reactance_pu, grid.lines[1].reactance_pu),
-        (-0.3697, 0.0001)
-    );
+    assert_eq!((grid.lines[0].reactance_pu, grid.lines[1].reactance_pu), (-0.3697, 0.0001));
     assert!(says(&imported, "1 branch without reactance"));
 }
 
@@ -266,20 +218,14 @@ fn remarks_on_a_wrong_count_and_reads_what_stands_there() {
     let source = changed(|_, _| {}).replacen("3 ITEMS", "4 ITEMS", 1);
     let (grid, imported) = imported(&source);
     assert_eq!(grid.buses.len(), 3);
-    assert!(says(
-        &imported,
-        "promises 4 items; the 3 that stand there were read"
-    ));
+    assert!(says(&imported, "promises 4 items; the 3 that stand there were read"));
 }
 
 #[track_caller]
 fn refused(source: &str, title: &str) {
     let problems = import(source.as_bytes(), "case.cdf").expect_err("it is wrong");
     assert!(
-        problems
-            .list()
-            .iter()
-            .any(|problem| problem.title.contains(title)),
+        problems.list().iter().any(|problem| problem.title.contains(title)),
         "{title:?}:\n{problems}"
     );
 }
@@ -288,10 +234,7 @@ fn refused(source: &str, title: &str) {
 fn refuses_what_is_no_such_file_or_is_cut_off() {
     refused("", "no section `BUS DATA FOLLOWS`");
     refused(&changed(|_, _| {}).replace("-999", "   "), "does not end");
-    refused(
-        &changed(|_, _| {}).replace(" 100.0  1973", "        1973"),
-        "no MVA base",
-    );
+    refused(&changed(|_, _| {}).replace(" 100.0  1973", "        1973"), "no MVA base");
 }
 
 #[test]
@@ -303,10 +246,7 @@ fn points_at_the_columns_of_a_field_that_is_no_number() {
         (1, 4),
         "{problems}"
     );
-    assert!(
-        problems.to_string().contains("this is `4O.0`"),
-        "{problems}"
-    );
+    assert!(problems.to_string().contains("this is `4O.0`"), "{problems}");
 }
 
 #[test]
@@ -331,25 +271,13 @@ fn refuses_a_network_in_pieces() {
 
 #[test]
 fn refuses_a_file_without_buses_or_with_too_many() {
-    refused(
-        &file(&title("100.0", "NONE"), &[], &[]),
-        "the file has no bus",
-    );
-    let many: Vec<String> = (1..=2001)
-        .map(|number| bus(number, "", 1, 0, "", ""))
-        .collect();
-    refused(
-        &file(&title("100.0", "MANY"), &many, &[]),
-        "the importer holds 2000",
-    );
+    refused(&file(&title("100.0", "NONE"), &[], &[]), "the file has no bus");
+    let many: Vec<String> = (1..=2001).map(|number| bus(number, "", 1, 0, "", "")).collect();
+    refused(&file(&title("100.0", "MANY"), &many, &[]), "the importer holds 2000");
 }
 
 #[test]
 fn imports_a_single_bus() {
-    let (grid, _) = imported(&file(
-        &title("100.0", "ONE"),
-        &[bus(1, "", 1, 3, "5.0", "")],
-        &[],
-    ));
+    let (grid, _) = imported(&file(&title("100.0", "ONE"), &[bus(1, "", 1, 3, "5.0", "")], &[]));
     assert_eq!((grid.buses.len(), grid.units[0].base_mw), (1, 5.0));
 }

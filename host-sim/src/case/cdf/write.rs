@@ -15,11 +15,7 @@ pub(super) fn write(network: &Network) -> String {
     for rule in &network.rules {
         let _ = writeln!(out, "# - {}", printable(rule));
     }
-    let _ = writeln!(
-        out,
-        "\nformat = 1\n\n[grid]\nname = \"{}\"",
-        name(&network.title)
-    );
+    let _ = writeln!(out, "\nformat = 1\n\n[grid]\nname = \"{}\"", name(&network.title));
     let _ = writeln!(out, "base_mva = {:?}", network.base_mva);
     // The format states no frequency; the systems published in it are North American.
     let _ = writeln!(out, "nominal_hz = 60.0");
@@ -28,11 +24,7 @@ pub(super) fn write(network: &Network) -> String {
     }
     for bus in &network.buses {
         let label = printable(&bus.label);
-        let remark = if label.is_empty() {
-            label
-        } else {
-            format!("# {label}\n")
-        };
+        let remark = if label.is_empty() { label } else { format!("# {label}\n") };
         let _ = writeln!(out, "\n{remark}[[bus]]\nname = \"{}\"", bus.name);
         let _ = writeln!(out, "area = \"{}\"", bus.area);
         if bus.load_mw > 0.0 {
@@ -42,12 +34,7 @@ pub(super) fn write(network: &Network) -> String {
     for line in &network.lines {
         let end = |index: usize| network.buses[index].name.as_str();
         let _ = writeln!(out, "\n[[line]]\nname = \"{}\"", line.name);
-        let _ = writeln!(
-            out,
-            "from = \"{}\"\nto = \"{}\"",
-            end(line.from),
-            end(line.to)
-        );
+        let _ = writeln!(out, "from = \"{}\"\nto = \"{}\"", end(line.from), end(line.to));
         let _ = writeln!(
             out,
             "reactance_pu = {:?}\nrating_mw = {:?}",
@@ -61,11 +48,7 @@ pub(super) fn write(network: &Network) -> String {
 }
 
 fn write_unit(out: &mut String, unit: &NetworkUnit) {
-    let _ = writeln!(
-        out,
-        "\n[[unit]]\nname = \"{}\"\nbus = \"{}\"",
-        unit.name, unit.bus
-    );
+    let _ = writeln!(out, "\n[[unit]]\nname = \"{}\"\nbus = \"{}\"", unit.name, unit.bus);
     let base_mw = unit.base_mw;
     if unit.fixed {
         let _ = writeln!(out, "kind = \"solar\"\nstatus = \"fixed\"");
@@ -100,11 +83,7 @@ fn name(title: &str) -> String {
         .take(40)
         .collect();
     let clean = clean.trim();
-    if clean.is_empty() {
-        "Imported grid".to_owned()
-    } else {
-        clean.to_owned()
-    }
+    if clean.is_empty() { "Imported grid".to_owned() } else { clean.to_owned() }
 }
 
 /// A comment of one line.

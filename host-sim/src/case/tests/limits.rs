@@ -5,12 +5,7 @@ use super::{a_problem, changed, one_problem};
 
 #[test]
 fn rejects_lines_outside_the_model() {
-    a_problem(
-        "to = \"N3\"",
-        "to = \"N2\"",
-        "to = \"N2\"",
-        "line `N2-N2` ends where it begins",
-    );
+    a_problem("to = \"N3\"", "to = \"N2\"", "to = \"N2\"", "line `N2-N2` ends where it begins");
     one_problem(
         "reactance_pu = 0.2",
         "reactance_pu = 0.0",
@@ -23,12 +18,7 @@ fn rejects_lines_outside_the_model() {
         "-0.3",
         "`reactance_pu` is out of range",
     );
-    one_problem(
-        "rating_mw = 55.0\n",
-        "",
-        "[[line]]",
-        "tie `East tie` has no rating",
-    );
+    one_problem("rating_mw = 55.0\n", "", "[[line]]", "tie `East tie` has no rating");
     one_problem(
         "schedule_mw = 10.0",
         "schedule_mw = 51",
@@ -47,12 +37,7 @@ fn rejects_lines_outside_the_model() {
         "99",
         "the short-time rating is below",
     );
-    one_problem(
-        "rating_short_min = 15.0\n",
-        "",
-        "rating_short_mw",
-        "half a short-time rating",
-    );
+    one_problem("rating_short_min = 15.0\n", "", "rating_short_mw", "half a short-time rating");
 }
 
 #[test]
@@ -64,12 +49,7 @@ fn accepts_an_internal_line_compensated_below_zero() {
 
 #[test]
 fn rejects_ranges_that_cross() {
-    a_problem(
-        "min_mw = 50.0",
-        "min_mw = 201",
-        "min_mw = 201",
-        "`min_mw` is above `max_mw`",
-    );
+    a_problem("min_mw = 50.0", "min_mw = 201", "min_mw = 201", "`min_mw` is above `max_mw`");
     one_problem(
         "emergency_min_mw = 45.0",
         "emergency_min_mw = 55",
@@ -82,12 +62,7 @@ fn rejects_ranges_that_cross() {
         "199",
         "ends inside the normal one",
     );
-    one_problem(
-        "reserve_up_mw = 20.0",
-        "reserve_up_mw = 140",
-        "140",
-        "the reserve is larger",
-    );
+    one_problem("reserve_up_mw = 20.0", "reserve_up_mw = 140", "140", "the reserve is larger");
 }
 
 #[test]
@@ -108,21 +83,14 @@ fn rejects_a_base_point_outside_the_range_less_reserve() {
 
 #[test]
 fn accepts_a_fixed_unit_in_its_emergency_range() {
-    let text = changed(
-        "max_mw = 100.0",
-        "max_mw = 70.0\nemergency_max_mw = 80.0\nstatus = \"fixed\"",
-    );
+    let text =
+        changed("max_mw = 100.0", "max_mw = 70.0\nemergency_max_mw = 80.0\nstatus = \"fixed\"");
     assert!(parse_grid(&text, "small.grid.toml").is_ok());
 }
 
 #[test]
 fn rejects_units_that_store_or_take_in_what_they_cannot() {
-    one_problem(
-        "energy_mwh = 12.0\n",
-        "",
-        "[[unit]]",
-        "battery `Jar` has no energy",
-    );
+    one_problem("energy_mwh = 12.0\n", "", "[[unit]]", "battery `Jar` has no energy");
     one_problem(
         "min_mw = 50.0",
         "min_mw = 50.0\nenergy_mwh = 5",
@@ -168,8 +136,5 @@ fn says_by_how_much_generation_and_load_differ() {
         "generation is 1.000 MW more than load",
     );
     let text = changed("load_mw = 60.0", "load_mw = 60.09");
-    assert!(
-        parse_grid(&text, "small.grid.toml").is_ok(),
-        "rounding is let through"
-    );
+    assert!(parse_grid(&text, "small.grid.toml").is_ok(), "rounding is let through");
 }

@@ -30,10 +30,7 @@ fn one_problem(from: &str, to: &str, on_line: &str, title: &str) {
     let text = changed(from, to);
     let problems = parse_grid(&text, "small.grid.toml").expect_err("the change is wrong");
     assert_eq!(problems.list().len(), 1, "exactly one problem:\n{problems}");
-    assert!(
-        has(&problems, &text, on_line, title),
-        "{title:?} on {on_line:?}:\n{problems}"
-    );
+    assert!(has(&problems, &text, on_line, title), "{title:?} on {on_line:?}:\n{problems}");
 }
 
 /// Assert that a changed small grid has a problem with this title on this line, among others.
@@ -41,8 +38,5 @@ fn one_problem(from: &str, to: &str, on_line: &str, title: &str) {
 fn a_problem(from: &str, to: &str, on_line: &str, title: &str) {
     let text = changed(from, to);
     let problems = parse_grid(&text, "small.grid.toml").expect_err("the change is wrong");
-    assert!(
-        has(&problems, &text, on_line, title),
-        "{title:?} on {on_line:?}:\n{problems}"
-    );
+    assert!(has(&problems, &text, on_line, title), "{title:?} on {on_line:?}:\n{problems}");
 }

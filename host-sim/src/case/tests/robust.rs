@@ -11,12 +11,7 @@ fn damaged(text: &str, at: usize, len: usize, put: &str) -> String {
     let chars: Vec<char> = text.chars().collect();
     let at = at % (chars.len() + 1);
     let end = (at + len).min(chars.len());
-    chars[..at]
-        .iter()
-        .copied()
-        .chain(put.chars())
-        .chain(chars[end..].iter().copied())
-        .collect()
+    chars[..at].iter().copied().chain(put.chars()).chain(chars[end..].iter().copied()).collect()
 }
 
 proptest! {
