@@ -1,3 +1,20 @@
-//! x
-use clarabel as _;
-use hedgerow as _;
+//! Everything that the outside world checks, and whole-program runs.
+//!
+//! One binary, so that the heavy libraries are linked once. A module per kind
+//! of check; data in `tests/data`, helpers in `tests/src`.
+
+mod acceptance;
+mod catalogue;
+mod cli;
+mod closed39;
+mod codes;
+mod frequency;
+mod incident;
+mod mutation;
+mod optima;
+mod plays;
+mod published;
+mod trajectories;
+mod updates;
+mod verdicts;
+mod worked;

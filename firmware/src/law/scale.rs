@@ -11,6 +11,7 @@
 //! power iteration gives the step.
 
 use super::kernel::{at, dot, entry, mat_vec, max, max_abs, put, sqrt};
+use core::ops::Range;
 use hedgerow_protocol::limits::TIES_MAX;
 use nalgebra::{ArrayStorage, SMatrix};
 
@@ -56,7 +57,7 @@ pub struct Scaled<const X: usize, const R: usize> {
     pub(crate) eqs: usize,
     /// Step while every open column may move.
     pub(crate) sigma: f32,
-    /// Step while the columns from `pinned` on stand still (the shadow's ties).
+    /// Step while the `pinned` columns stand still (the shadow's tie flows).
     pub(crate) sigma_pinned: f32,
 }
 
@@ -88,6 +89,11 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
         self.rows
     }
 
+    /// Step length while every open column may move.
+    pub fn sigma(&self) -> f32 {
+        self.sigma
+    }
+
     /// Number of equality rows.
     pub fn eqs(&self) -> usize {
         self.eqs
@@ -101,8 +107,8 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
     /// Scale the physical matrix that was filled in.
     ///
     /// Shapes: `curvature` and `columns` one entry per unknown; the first `eqs`
-    /// of `rows` rows are equalities (at most [`EQUALITIES_MAX`]); columns from
-    /// `pinned` on stand still in the shadow.
+    /// of `rows` rows are equalities (at most [`EQUALITIES_MAX`]); the
+    /// `pinned` columns stand still in the shadow.
     /// Cost: about 2 (eqs^2 + 82) rows x cols flops.
     pub fn scale(
         &mut self,
@@ -110,7 +116,7 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
         columns: &[Column],
         rows: usize,
         eqs: usize,
-        pinned: usize,
+        pinned: Range<usize>,
     ) {
         self.cols = columns.len().min(X);
         self.rows = rows.min(R);
@@ -120,8 +126,8 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
         self.orthonormalise();
         self.normalise_lines();
         self.untranspose();
-        self.sigma = self.step(self.cols);
-        self.sigma_pinned = self.step(pinned.min(self.cols));
+        self.sigma = self.step(0..0);
+        self.sigma_pinned = self.step(pinned);
     }
 
     fn scale_columns(&mut self, curvature: &[f32], columns: &[Column]) {
@@ -195,8 +201,8 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
         }
     }
 
-    /// Step length from the largest eigenvalue of `A A'` over the first `cols` columns.
-    fn step(&self, cols: usize) -> f32 {
+    /// Step length from the largest eigenvalue of `A A'` without the `left_out` columns.
+    fn step(&self, left_out: Range<usize>) -> f32 {
         let mut w = [0.0; R];
         for (i, value) in w.iter_mut().enumerate().take(self.rows) {
             // Any start that is not regular will do; five and seven share no factor.
@@ -205,14 +211,13 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
         let mut u = [0.0; X];
         let mut eigenvalue = 0.0;
         for _ in 0..POWER_STEPS {
-            mat_vec(&self.at, &w, cols, self.rows, &mut u);
-            // The product works in whole blocks; what lies beyond the columns does not count.
-            u.iter_mut().skip(cols).for_each(|x| *x = 0.0);
+            mat_vec(&self.at, &w, self.cols, self.rows, &mut u);
+            u.get_mut(left_out.clone()).unwrap_or_default().fill(0.0);
             let size = dot(&w, &w);
             if size > 0.0 {
                 eigenvalue = dot(&u, &u) / size;
             }
-            mat_vec(&self.a, &u, self.rows, cols, &mut w);
+            mat_vec(&self.a, &u, self.rows, self.cols, &mut w);
             let most = max_abs(&w);
             if most > 0.0 {
                 w.iter_mut().for_each(|x| *x /= most);

@@ -429,7 +429,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         let (cols, rows, eqs) = (self.plan.cols(), self.plan.rows(), self.plan.eqs());
         let kinds = self.kinds;
         let used = kinds.get(..cols).unwrap_or_default();
-        self.scaled.scale(&self.problem.curvature, used, rows, eqs, self.plan.actuators());
+        let flows = self.plan.tie_col(0)..self.plan.angle_col(0);
+        self.scaled.scale(&self.problem.curvature, used, rows, eqs, flows);
         let mut scaled = [0.0; R];
         self.scaled.scaled_dual(&main, &mut scaled);
         clamp_dual(&mut scaled, self.plan.settings.dual_clamp);

@@ -153,7 +153,8 @@ impl<const B: usize, const X: usize, const R: usize> View<'_, B, X, R> {
 
     /// Ranges for the shadow: the next tighter rung, shrunk by the climb margin.
     ///
-    /// Above `lean` the ties stay where they are; to climb to `keep` they must be on schedule.
+    /// Above `lean` the tie flows stay where they are and only the mid-tie angles
+    /// may follow; to climb to `keep` both must be on schedule.
     pub fn shadow(&self, rung: Rung, ends: &[TieEnd; TIES_MAX], boxes: &mut Boxes<X>) {
         let tighter = rung.up().unwrap_or(Rung::Keep);
         self.actuators(tighter, boxes);
@@ -164,7 +165,7 @@ impl<const B: usize, const X: usize, const R: usize> View<'_, B, X, R> {
             if tighter == Rung::Keep || !self.rows.is_attached(index) {
                 self.closed_tie(index, boxes);
             } else {
-                self.pin_tie(index, end.deviation(), [0.0; 2], boxes);
+                self.pin_tie(index, end.deviation(), [0.0, self.plan.settings.angle_band], boxes);
             }
         }
     }

@@ -1,0 +1,1 @@
+//! (its author fills this)
