@@ -15,9 +15,10 @@ pub(super) const TIE_CURVATURE: f64 = 0.05;
 /// Which sheds the programme may choose.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub(super) enum Sheds {
-    /// All of an area at `shed`, save the locked ones.
+    /// All of an area at `shed`, those held for the operator too: what is needed is
+    /// asked of the grid, not of what happens to be off.
     Free,
-    /// As `Free`, but switched feeders stay as they are.
+    /// As `Free`, but switched and locked feeders stay as they are.
     SwitchedAsTheyStand,
     /// None: everything as recorded.
     AsTheyStand,
@@ -85,7 +86,7 @@ impl Setting<'_> {
         let f = &self.grid.feeders[feeder];
         let area = self.grid.buses[f.bus].area;
         let stands = self.pu(self.end.feeder_shed_mw[feeder]);
-        let pinned = self.end.feeder_locked[feeder]
+        let pinned = (self.end.feeder_locked[feeder] && self.sheds != Sheds::Free)
             || self.sheds == Sheds::AsTheyStand
             || (self.sheds == Sheds::SwitchedAsTheyStand && f.kind == FeederKind::Switched)
             || !self.topology.alive[area]

@@ -273,18 +273,17 @@ fn a_dark_bus_is_left_out_and_the_rest_judged() {
     assert_eq!(judgement.least_rung, [0, 0]);
 }
 
-/// 50 MW stay off until the operator allows them back: they are no choice, so they are no fault.
+/// 50 MW that nobody needs off wait for the operator: the end is not the least that is possible.
 #[test]
-fn a_locked_feeder_is_taken_as_it_stands() {
+fn a_locked_feeder_without_need_is_not_the_least() {
     let (grid, play, mut run) = sample::two_areas();
     run.end.feeder_shed_mw[0] = 50.0;
     run.end.feeder_locked[0] = true;
+    run.end.rung = vec![3, 0];
     sample::set_units(&grid, &mut run, &[62.5, 87.5, 100.0]);
     let judgement = judge(&grid, &play, &run);
-    assert_eq!(judgement.outcome, Outcome::Kept, "{judgement:?}");
+    assert_eq!(judgement.outcome, Outcome::Broken);
     assert_eq!(judgement.least_rung, [0, 0]);
-    run.end.feeder_locked[0] = false;
-    assert_eq!(judge(&grid, &play, &run).outcome, Outcome::Broken);
 }
 
 /// A unit the operator fixed is no choice either: A2 alone takes the 40 MW.
