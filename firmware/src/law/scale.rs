@@ -57,8 +57,10 @@ pub struct Scaled<const X: usize, const R: usize> {
     pub(crate) eqs: usize,
     /// Step while every open column may move.
     pub(crate) sigma: f32,
-    /// Step while the `pinned` columns stand still (the shadow's tie flows).
-    pub(crate) sigma_pinned: f32,
+    /// Step while tie flows stand still (the shadow above `lean`).
+    pub(crate) sigma_flows_fixed: f32,
+    /// Step while tie flows and angles stand still (the shadow looking at `keep`).
+    pub(crate) sigma_ties_fixed: f32,
 }
 
 impl<const X: usize, const R: usize> Scaled<X, R> {
@@ -75,7 +77,8 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
             rows: 0,
             eqs: 0,
             sigma: 1.0,
-            sigma_pinned: 1.0,
+            sigma_flows_fixed: 1.0,
+            sigma_ties_fixed: 1.0,
         }
     }
 
@@ -108,15 +111,15 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
     ///
     /// Shapes: `curvature` and `columns` one entry per unknown; the first `eqs`
     /// of `rows` rows are equalities (at most [`EQUALITIES_MAX`]); the
-    /// `pinned` columns stand still in the shadow.
-    /// Cost: about 2 (eqs^2 + 82) rows x cols flops.
+    /// columns of the tie flows are `flows`, those of the angles follow to the end.
+    /// Cost: about 2 (eqs^2 + 122) rows x cols flops.
     pub fn scale(
         &mut self,
         curvature: &[f32],
         columns: &[Column],
         rows: usize,
         eqs: usize,
-        pinned: Range<usize>,
+        flows: Range<usize>,
     ) {
         self.cols = columns.len().min(X);
         self.rows = rows.min(R);
@@ -127,7 +130,8 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
         self.normalise_lines();
         self.untranspose();
         self.sigma = self.step(0..0);
-        self.sigma_pinned = self.step(pinned);
+        self.sigma_flows_fixed = self.step(flows.clone());
+        self.sigma_ties_fixed = self.step(flows.start..self.cols);
     }
 
     fn scale_columns(&mut self, curvature: &[f32], columns: &[Column]) {

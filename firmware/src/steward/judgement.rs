@@ -7,7 +7,7 @@
 
 use super::Steward;
 use super::ranges::{Boxes, between};
-use crate::law::kernel::{abs, max_abs};
+use crate::law::kernel::{abs, max_abs, min};
 use crate::neighbour::TieEnd;
 use crate::verdict::{Product, Ranges, Rows, dust, shortfall};
 use hedgerow_protocol::message::Rung;
@@ -16,6 +16,11 @@ use hedgerow_protocol::message::Rung;
 const BETWEEN_SLACK: f32 = 0.001;
 /// A neighbour's value counts as steady within this of its own low-pass, pu.
 const STEADY: f32 = 0.03;
+/// Low-pass time of how far the ends of the open ties are apart, s.
+const GAP_TREND_S: f32 = 5.0;
+/// Below this share of its low-pass the gap is closing: an exponential approach of
+/// up to 100 s, 1 - 5 s / 100 s.
+const CLOSING: f32 = 0.95;
 /// Without open ties a dual this large, as a share of the clamp, may be left from an old need.
 const STALE_SHARE: f32 = 0.25;
 /// The same share for the shadow, which often looks at a rung that is far from possible.
@@ -41,6 +46,7 @@ pub struct Proof<const X: usize, const R: usize> {
 pub struct Judgement<const X: usize, const R: usize> {
     last: [f32; R],
     pause_ticks: u16,
+    gap_trend: f32,
     shadow_pause_ticks: u16,
     /// Shortfall proven in this tick with all the help that could come, pu.
     pub proven: f32,
@@ -62,6 +68,7 @@ impl<const X: usize, const R: usize> Judgement<X, R> {
         Self {
             last: [0.0; R],
             pause_ticks: 0,
+            gap_trend: 0.0,
             shadow_pause_ticks: 0,
             proven: -1.0,
             error: [0.0; R],
@@ -101,7 +108,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         self.rows.errors(&self.plan, &self.estimate, &mut self.judgement.error);
         let most = self.with_all_help();
         let (between, theirs) = self.with_help_delivered();
-        let leaning = self.ladder.rung() != Rung::Keep;
+        let stalled = self.is_agreement_stalled();
+        let leaning = self.ladder.rung() != Rung::Keep && stalled;
         let threshold = self.plan.settings.proof_threshold;
         let (mut hard, mut conditional) = (false, false);
         for candidate in [&mut dual, &mut difference] {
@@ -115,6 +123,21 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         }
         self.drop_stale_dual(&most);
         (hard, conditional)
+    }
+
+    /// Whether the two ends of the open ties have stopped coming closer.
+    ///
+    /// While they still do, what is delivered now says nothing of what will be.
+    fn is_agreement_stalled(&mut self) -> bool {
+        let settings = &self.plan.settings;
+        let ends = self.ends.iter().zip(&self.open).filter(|(_, open)| **open);
+        let gap = ends.fold(0.0, |sum, (end, _)| {
+            let theirs = end.theirs(settings.neighbour_ticks);
+            sum + theirs.map_or(0.0, |theirs| apart(end.deviation(), theirs.deviation))
+        });
+        let trend = &mut self.judgement.gap_trend;
+        *trend += min(settings.tick_s / GAP_TREND_S, 1.0) * (gap - *trend);
+        gap > CLOSING * *trend
     }
 
     /// Shortfall that a dual vector proves on some ranges; the strongest is kept as the proof.
@@ -216,6 +239,11 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             self.judgement.pause_ticks = (STALE_PAUSE_S / settings.tick_s) as u16;
         }
     }
+}
+
+/// How far two ends are apart in flow.
+fn apart([ours, _]: [f32; 2], [theirs, _]: [f32; 2]) -> f32 {
+    abs(ours - theirs)
 }
 
 /// The first `count` values, or as many as there are.

@@ -558,7 +558,11 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         }
         self.limits.fill(&self.scaled, &self.problem);
         let settings = self.plan.settings;
-        let (sigma, clamp) = (self.scaled.sigma_pinned, settings.dual_clamp);
+        let sigma = match self.ladder.rung() {
+            Rung::Keep | Rung::Lean => self.scaled.sigma_ties_fixed,
+            Rung::Stretch | Rung::Shed => self.scaled.sigma_flows_fixed,
+        };
+        let clamp = settings.dual_clamp;
         self.drop_stale_shadow(&boxes);
         self.shadow.run(&self.scaled, &self.limits, sigma, clamp, settings.shadow_iterations);
         let violation = self.shadow.violation(&self.scaled, &self.limits);
