@@ -9,64 +9,34 @@
 //! the law; feeders; verdict; shadow; ladder; messages.
 
 mod feeders;
+mod hear;
 mod judgement;
 mod ranges;
 mod rows;
 mod say;
+mod shape;
+mod write;
 
 pub use say::Say;
 
 use crate::ladder::{Finding, Ladder, Move};
-use crate::law::kernel::{abs, at, clip, max, put};
+use crate::law::kernel::{abs, at, max, put};
 use crate::law::scale::Column;
 use crate::law::{Iterate, Limits, Problem, Scaled};
 use crate::measure::{AGE_MAX, Estimate, Measured, Sight};
 use crate::neighbour::{self, NOBODY, TieEnd};
 use crate::network::{Change, Network};
 use crate::plan::Plan;
-use feeders::{FeederTick, Feeders};
+use feeders::Feeders;
+use hear::Ramped;
 use hedgerow_protocol::limits::TIES_MAX;
-use hedgerow_protocol::message::{Message, Refusal, Rung, Verdict};
+use hedgerow_protocol::message::{Refusal, Rung, Verdict};
 use judgement::Judgement;
-use ranges::{Boxes, View};
+use ranges::Boxes;
 use rows::Rows;
 
-/// A set-point that moves less than this in a tick stands still, pu (0.01 MW on 100 MVA).
-const STILL: f32 = 1e-4;
 /// Frequency deviation below which an area counts as at rest, Hz.
 const REST_HZ: f32 = 1e-3;
-
-/// A value on its way to another.
-#[derive(Clone, Copy, Debug, PartialEq)]
-struct Ramped {
-    now: f32,
-    goal: f32,
-    ticks_left: u32,
-}
-
-impl Ramped {
-    const fn at(value: f32) -> Self {
-        Self { now: value, goal: value, ticks_left: 0 }
-    }
-
-    fn go(&mut self, goal: f32, ticks: u32) {
-        self.goal = goal;
-        self.ticks_left = ticks;
-        if ticks == 0 {
-            self.now = goal;
-        }
-    }
-
-    fn pass(&mut self) {
-        if self.ticks_left > 0 {
-            self.now += (self.goal - self.now) / self.ticks_left as f32;
-            self.ticks_left -= 1;
-        }
-        if self.ticks_left == 0 {
-            self.now = self.goal;
-        }
-    }
-}
 
 /// The controller of one area. At most B buses, X unknowns, R rows.
 #[derive(Clone, Debug)]
@@ -197,65 +167,6 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     /// Set-point of a unit now, pu.
     pub fn setpoint(&self, unit: usize) -> f32 {
         at(&self.setpoint, unit)
-    }
-
-    /// Take in a message addressed to this steward.
-    ///
-    /// Returns whether it could be used; what can not is dropped whole.
-    pub fn hear(&mut self, message: &Message<'_>) -> bool {
-        if !self.ready {
-            return false;
-        }
-        let per_mw = 1.0 / self.plan.base_mva;
-        match message {
-            Message::Measurements(m) => {
-                let newer =
-                    !self.measured.any || (m.tick.wrapping_sub(self.measured.tick) as i32) > 0;
-                let fits = newer && Measured::fits(&self.plan, m);
-                if fits {
-                    self.measured.take(&self.plan, &self.network, m);
-                }
-                fits
-            }
-            Message::Schedule(s) => {
-                let goal = s.export_mw * per_mw;
-                let tie = self.plan.ties.get(usize::from(s.tie));
-                let fits = tie.is_some_and(|tie| abs(goal) <= tie.rating);
-                match self.schedule.get_mut(usize::from(s.tie)) {
-                    Some(schedule) if fits => schedule.go(goal, s.ramp_ticks),
-                    _ => return false,
-                }
-                true
-            }
-            Message::BasePoint(b) => {
-                let goal = b.base_mw * per_mw;
-                let unit = self.plan.units.get(usize::from(b.unit));
-                let fits =
-                    unit.is_some_and(|u| goal >= u.emergency_low && goal <= u.emergency_high);
-                match self.base.get_mut(usize::from(b.unit)) {
-                    Some(base) if fits => base.go(goal, b.ramp_ticks),
-                    _ => return false,
-                }
-                true
-            }
-            Message::Restore(_) => {
-                self.feeders.release();
-                true
-            }
-            Message::TieTerms(terms) => {
-                let ties = self.plan.ties.iter().zip(&mut self.ends);
-                let mut ends = ties.filter(|(tie, _)| tie.number == terms.tie);
-                ends.next().is_some_and(|(_, end)| end.hear(terms, &self.plan.settings))
-            }
-            Message::Hello(_)
-            | Message::CharterPart(_)
-            | Message::CharterState(_)
-            | Message::Run(_)
-            | Message::Stop(_)
-            | Message::Orders(_)
-            | Message::Status(_)
-            | Message::ProofPart(_) => false,
-        }
     }
 
     /// Move one tick on and say what must be said.
@@ -389,158 +300,6 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         active
     }
 
-    fn view<'a>(&'a self, schedule: &'a [f32; TIES_MAX]) -> View<'a, B, X, R> {
-        View {
-            plan: &self.plan,
-            network: &self.network,
-            measured: &self.measured,
-            rows: &self.rows,
-            feeders: &self.feeders,
-            schedule,
-        }
-    }
-
-    fn refresh_boxes(&mut self) {
-        let schedule = self.schedules();
-        let mut boxes = Boxes::new();
-        let view = self.view(&schedule);
-        view.actuators(self.ladder.rung(), &mut boxes);
-        view.ties(|index| self.open.get(index).copied().unwrap_or(false), &mut boxes);
-        self.boxes = boxes;
-    }
-
-    /// Which columns are open; true when that has changed.
-    fn update_kinds(&mut self) -> bool {
-        let schedule = self.schedules();
-        let mut kinds = [Column::Closed; X];
-        self.view(&schedule).columns(&self.boxes, &mut kinds);
-        let changed = kinds != self.kinds;
-        self.kinds = kinds;
-        changed
-    }
-
-    /// New rows or open columns: fill and scale again, keeping the physical duals.
-    fn rebuild(&mut self) {
-        let (mut main, mut shadow) = ([0.0; R], [0.0; R]);
-        self.scaled.physical_dual(&self.main.y, &mut main);
-        self.scaled.physical_dual(&self.shadow.y, &mut shadow);
-        self.fill_costs();
-        self.rows.fill(&self.plan, &self.network, self.scaled.matrix_mut());
-        let (cols, rows, eqs) = (self.plan.cols(), self.plan.rows(), self.plan.eqs());
-        let kinds = self.kinds;
-        let used = kinds.get(..cols).unwrap_or_default();
-        let flows = self.plan.tie_col(0)..self.plan.angle_col(0);
-        self.scaled.scale(&self.problem.curvature, used, rows, eqs, flows);
-        let mut scaled = [0.0; R];
-        self.scaled.scaled_dual(&main, &mut scaled);
-        clamp_dual(&mut scaled, self.plan.settings.dual_clamp);
-        self.main.set_dual(&scaled);
-        self.scaled.scaled_dual(&shadow, &mut scaled);
-        clamp_dual(&mut scaled, self.plan.settings.dual_clamp);
-        self.shadow.set_dual(&scaled);
-    }
-
-    /// The part of the problem that does not change from tick to tick.
-    fn fill_costs(&mut self) {
-        let settings = &self.plan.settings;
-        let units = self.plan.units.len();
-        for (index, unit) in self.plan.units.iter().enumerate() {
-            put(&mut self.problem.curvature, index, unit.cost);
-            put(&mut self.problem.weight, index, 0.0);
-        }
-        for (index, feeder) in self.plan.feeders.iter().enumerate() {
-            put(&mut self.problem.curvature, units + index, feeder.curvature);
-            put(&mut self.problem.weight, units + index, feeder.price);
-        }
-        for tie in 0..self.plan.ties.len() {
-            let curvature = settings.tie_curvature + settings.agreement_penalty;
-            let (flow, angle) = (self.plan.tie_col(tie), self.plan.angle_col(tie));
-            put(&mut self.problem.curvature, flow, curvature);
-            put(&mut self.problem.curvature, angle, curvature);
-            put(&mut self.problem.weight, flow, settings.tie_price);
-            put(&mut self.problem.weight, angle, 0.0);
-        }
-    }
-
-    /// The part that does: ranges, targets, prices, row limits.
-    fn fill_problem(&mut self) {
-        let schedule = self.schedules();
-        self.problem.low = self.boxes.low;
-        self.problem.high = self.boxes.high;
-        for (index, base) in self.base.iter().enumerate().take(self.plan.units.len()) {
-            put(&mut self.problem.target, index, base.now);
-        }
-        let prices = self.plan.ties.iter().zip(&self.ends).zip(&self.open).enumerate();
-        for (index, ((tie, end), &open)) in prices {
-            let [flow, angle] = if open { end.price() } else { [0.0; 2] };
-            let flow = if tie.from_end { flow } else { -flow };
-            put(&mut self.problem.price, self.plan.tie_col(index), flow);
-            put(&mut self.problem.price, self.plan.angle_col(index), angle);
-        }
-        self.rows.limits(
-            &self.plan,
-            &self.network,
-            &self.estimate.part,
-            &schedule,
-            &mut self.problem,
-        );
-    }
-
-    /// The law's value of every unknown, inside its range.
-    fn wishes(&self) -> [f32; X] {
-        let mut wish = [0.0; X];
-        for (col, value) in wish.iter_mut().enumerate().take(self.plan.cols()) {
-            let (low, high) = self.boxes.get(col);
-            *value = self.main.value(&self.scaled, col, low, high);
-        }
-        wish
-    }
-
-    /// Write the units' set-points; true when none of them moves any more.
-    fn write_units(&mut self, wish: &[f32; X], sight: Sight) -> bool {
-        let mut still = true;
-        for (index, unit) in self.plan.units.iter().enumerate() {
-            // Cut off from sight or from the area: the last order stands.
-            let frozen = sight == Sight::None
-                || !self.estimate.is_started()
-                || !self.network.is_kept(unit.bus.into());
-            let before = at(&self.setpoint, index);
-            let value = if frozen { before } else { at(wish, index) };
-            let value = clip(value, min_zero(unit.emergency_low), max(unit.emergency_high, 0.0));
-            still &= abs(value - before) < STILL;
-            put(&mut self.setpoint, index, value);
-        }
-        still
-    }
-
-    fn settle_ends(&mut self, wish: &[f32; X]) {
-        let settings = self.plan.settings;
-        let ties = self.plan.ties.iter().zip(&mut self.ends).zip(&self.open).enumerate();
-        for (index, ((tie, end), &open)) in ties {
-            let flow = at(wish, self.plan.actuators() + index);
-            let angle = at(wish, self.plan.actuators() + self.plan.ties.len() + index);
-            let along = if tie.from_end { flow } else { -flow };
-            end.settle(open, [along, angle], &settings);
-        }
-    }
-
-    fn write_feeders(&mut self, wish: &[f32; X], violation: f32) -> f32 {
-        let mut feeder_wish = [0.0; X];
-        let wishes = wish.iter().skip(self.plan.units.len());
-        for (slot, value) in feeder_wish.iter_mut().zip(wishes).take(self.plan.feeders.len()) {
-            *slot = *value;
-        }
-        let now = FeederTick {
-            rung: self.ladder.rung(),
-            freq_dev_hz: self.measured.freq_dev_hz.unwrap_or(0.0),
-            violation,
-            settled: self.verdict == Verdict::Settled,
-            ripe: self.ladder.is_ripe(&self.plan.settings),
-        };
-        self.feeders.update(&self.plan, &feeder_wish, &self.boxes, now);
-        self.feeders.total(self.plan.feeders.len())
-    }
-
     /// Solve the next tighter rung beside; true when it fits within tolerance.
     fn run_shadow(&mut self) -> bool {
         let schedule = self.schedules();
@@ -596,15 +355,5 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
 impl<const B: usize, const X: usize, const R: usize> Default for Steward<B, X, R> {
     fn default() -> Self {
         Self::new()
-    }
-}
-
-fn min_zero(value: f32) -> f32 {
-    crate::law::kernel::min(value, 0.0)
-}
-
-fn clamp_dual(y: &mut [f32], clamp: f32) {
-    for value in y {
-        *value = clip(*value, -clamp, clamp);
     }
 }
