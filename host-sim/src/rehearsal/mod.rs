@@ -26,7 +26,7 @@ use ramps::Ramps;
 use recorder::Recorder;
 use thiserror::Error;
 
-pub use balance::{TUNED_GAINS_PER_S, tune};
+pub use balance::{GAINS_TRIED_PER_S, TUNED_GAIN_PER_S, TUNING_PLAYS, tune};
 pub use crew::HostNode;
 
 /// Why a rehearsal could not run.
@@ -60,8 +60,7 @@ pub fn rehearse(
     scheme: Scheme,
     watch: &mut dyn FnMut(f64) -> bool,
 ) -> Result<Recording, RehearsalError> {
-    let gain = TUNED_GAINS_PER_S[1];
-    rehearse_with_gain(grid, play, scheme, gain, watch)
+    rehearse_with_gain(grid, play, scheme, TUNED_GAIN_PER_S, watch)
 }
 
 /// The same with a stated gain of the area control error scheme, per s.
@@ -120,7 +119,12 @@ impl<'g> Loop<'g> {
             }
         };
         let ramps = Ramps::new(grid, schedules);
-        let recorder = Recorder::new(grid, play, scheme, &plant);
+        let mut recorder = Recorder::new(grid, play, scheme, &plant);
+        if let Helm::Baseline(balance) = &helm
+            && let Some(text) = balance.sentence(gain_per_s)
+        {
+            recorder.tell(0.0, text);
+        }
         let steps = (play.run.tick_s / play.run.plant_step_s).round().max(1.0) as u32;
         Ok(Self { grid, play, plant, helm, ramps, recorder, next_event: 0, steps_per_tick: steps })
     }
