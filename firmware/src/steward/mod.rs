@@ -347,8 +347,9 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             self.say_proof(tick, say);
         }
         self.say_orders(tick, say);
-        self.say_status(tick, say);
         self.say_terms(tick, say);
+        // Last, so that whoever waits for it has heard everything of this tick.
+        self.say_status(tick, say);
     }
 }
 

@@ -246,7 +246,7 @@ fn end_of(grid: &Grid, plant: &Plant, helm: Option<(&Ramps, Option<&Crew>)>) -> 
         black_load_mw: black
             .filter(|((_, island), _)| island.is_none())
             .map(|((bus, _), _)| bus.load_mw)
-            .sum(),
+            .fold(0.0, |sum, load_mw| sum + load_mw),
     }
 }
 
