@@ -14,6 +14,7 @@ use clap::{Parser, Subcommand};
 use crate::report::summary::Colour;
 
 pub mod check;
+pub mod divide;
 pub mod import;
 pub mod new;
 
@@ -57,6 +58,10 @@ pub struct Cli {
 pub enum Command {
     /// Run a disturbance in closed loop, judge its end and write the report.
     Rehearse(rehearse::Args),
+    /// Choose the tie lines to leave open so that the areas form a tree.
+    Divide(divide::Args),
+    /// Write a commented grid and play to start from, or a made-up grid.
+    New(new::Args),
 }
 
 /// Run the command that was given.
@@ -65,6 +70,8 @@ pub enum Command {
 pub fn run(cli: &Cli) -> Result<Ending, Failure> {
     match &cli.command {
         Command::Rehearse(args) => rehearse::run(args),
+        Command::Divide(args) => divide::run(args),
+        Command::New(args) => new::run(args),
     }
 }
 

@@ -273,6 +273,7 @@ mod tests {
     fn parsed(line: &str) -> Args {
         match Cli::parse_from(line.split_whitespace()).command {
             super::super::Command::Rehearse(args) => args,
+            other => panic!("{other:?}"),
         }
     }
 
