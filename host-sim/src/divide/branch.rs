@@ -128,13 +128,24 @@ impl Search<'_> {
         if bound >= self.best.worst.loading {
             return;
         }
-        let open = (0..alive.len()).find(|&c| marks[c] == Mark::Undecided && sure[c].is_none());
-        match open {
+        match self.next(marks, &sure) {
             Some(corridor) => self.decide(marks, corridor),
             // What is alive and unsure but decided would be a ring of kept corridors.
             None if known.len() + 1 == areas => self.choose(known),
             None => {}
         }
+    }
+
+    /// The corridor to decide next: of the area that needs fewest more to have its flows known.
+    fn next(&self, marks: &[Mark], sure: &[Option<Sure>]) -> Option<usize> {
+        let open = |c: &usize| marks[*c] == Mark::Undecided && sure[*c].is_none();
+        let mut around = vec![0_usize; self.problem.surplus_mw.len()];
+        for corridor in (0..marks.len()).filter(open) {
+            around[self.ends[corridor].0] += 1;
+            around[self.ends[corridor].1] += 1;
+        }
+        let (a, b) = (|c: usize| self.ends[c].0, |c: usize| self.ends[c].1);
+        (0..marks.len()).filter(open).min_by_key(|&c| around[a(c)].min(around[b(c)]))
     }
 
     fn decide(&mut self, marks: &mut [Mark], corridor: usize) {

@@ -60,7 +60,7 @@ impl Default for Settings {
         Self {
             areas: None,
             weight: Weight::Flow,
-            trees_max: 20_000,
+            trees_max: 100_000,
             work_max: 1_500_000_000,
             outages_max: 4_000,
         }
@@ -69,6 +69,9 @@ impl Default for Settings {
 
 /// Choices that are listed at most.
 pub const LISTED_CHOICES: usize = 20;
+
+/// Guesses at a higher bound when splitting has not ended.
+const GUESSES: u64 = 5;
 
 /// A line counts as above its rating from here on.
 pub const FULL: f64 = 1.001;
@@ -282,6 +285,10 @@ fn split(
     };
     let outcome =
         branch::search(problem, start, base_mw, choices.bound, settings.work_max, go_on);
+    let outcome = match outcome.finished {
+        true => outcome,
+        false => raise_bound(problem, outcome.best, base_mw, settings, choices, go_on),
+    };
     let best = outcome.best.worst.loading;
     choices.certainty = match (outcome.finished, choices.bound > 0.0) {
         (true, _) => Certainty::Proven,
@@ -295,6 +302,41 @@ fn split(
     found.insert(0, outcome.best);
     choices.evaluated = found.len() as u64;
     found
+}
+
+/// Raise the bound: a search for anything below a guess that ends without a find proves the guess.
+///
+/// Cost: as much again as the search itself, at most.
+fn raise_bound(
+    problem: &TieProblem,
+    mut best: Found,
+    base_mw: &[f64],
+    settings: &Settings,
+    choices: &mut Choices,
+    go_on: &mut dyn FnMut(f64) -> bool,
+) -> branch::Outcome {
+    let work_max = settings.work_max / GUESSES;
+    let (mut low, mut high) = (choices.bound, best.worst.loading);
+    for _ in 0..GUESSES {
+        let guess = if low > 0.0 { (low * high).sqrt() } else { 0.5 * high };
+        let mut start = best.clone();
+        start.worst.loading = guess;
+        let outcome = branch::search(problem, start, base_mw, low, work_max, go_on);
+        if outcome.best.worst.loading < guess {
+            best = outcome.best;
+            (low, high) = if outcome.finished { (best.worst.loading, low) } else { (low, best.worst.loading) };
+        } else if outcome.finished {
+            low = guess;
+        } else {
+            high = guess;
+        }
+        if low >= high {
+            break;
+        }
+    }
+    choices.bound = low;
+    let finished = low >= best.worst.loading;
+    branch::Outcome { best, finished }
 }
 
 fn as_choice(problem: &TieProblem, found: &Found) -> Choice {

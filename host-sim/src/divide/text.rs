@@ -35,8 +35,11 @@ pub fn summary(d: &Document) -> String {
     choices(&mut out, d);
     price(&mut out, d);
     outages(&mut out, d);
-    for sentence in &d.too_large {
+    for sentence in d.too_large.iter().take(3) {
         let _ = writeln!(out, "\nnote: {sentence}");
+    }
+    if d.too_large.len() > 3 {
+        let _ = writeln!(out, "\nnote: {} more of this kind on the page", d.too_large.len() - 3);
     }
     out.push_str("\nCaution\n");
     for sentence in &d.caution {
@@ -57,6 +60,15 @@ fn line_of(name: &Option<String>) -> &str {
     name.as_deref().unwrap_or("-")
 }
 
+/// The first names of a list.
+fn listed(names: &[String]) -> String {
+    let shown = names.iter().take(ROWS).map(String::as_str).collect::<Vec<_>>().join(", ");
+    match names.len().saturating_sub(ROWS) {
+        0 => shown,
+        more => format!("{shown} and {more} more"),
+    }
+}
+
 fn choices(out: &mut String, d: &Document) {
     let _ = writeln!(out, "\nTies to leave open ({} ties, {} trees of ties)", d.ties.len(), tree_count(d));
     let _ = writeln!(out, "  {}", d.certainty);
@@ -70,7 +82,7 @@ fn choices(out: &mut String, d: &Document) {
             "  {:>7.1} % on {:<14} open: {}",
             100.0 * choice.worst_loading,
             line_of(&choice.worst_line),
-            choice.opened.join(", ")
+            listed(&choice.opened)
         );
     }
 }
@@ -93,12 +105,15 @@ fn side_words(closed: &ClosedFigures) -> String {
 
 fn price(out: &mut String, d: &Document) {
     out.push_str("\nWhat it costs\n");
-    for tie in &d.opened {
+    for tie in d.opened.iter().take(ROWS) {
         let _ = writeln!(
             out,
             "  open    {:<16} {:>8.1} deg stand across it (carried {:+.1} MW before)",
             tie.line, tie.angle_after_deg, tie.flow_before_mw
         );
+    }
+    if d.opened.len() > ROWS {
+        let _ = writeln!(out, "  open    and {} more on the page", d.opened.len() - ROWS);
     }
     for tie in &d.closed {
         let _ = writeln!(
@@ -111,7 +126,7 @@ fn price(out: &mut String, d: &Document) {
         );
     }
     let lost = d.lost_to_n1.len();
-    let _ = writeln!(out, "  lines whose single outage now splits the grid: {lost} ({})", d.lost_to_n1.join(", "));
+    let _ = writeln!(out, "  lines whose single outage now splits the grid: {lost} ({})", listed(&d.lost_to_n1));
 }
 
 fn outages(out: &mut String, d: &Document) {

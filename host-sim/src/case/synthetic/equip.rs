@@ -14,7 +14,7 @@ use crate::case::model::{
 const LOADED: f64 = 0.65;
 /// Share of the buses that have a unit.
 const FED: f64 = 0.18;
-/// Largest surplus or deficit of an area as a share of its load.
+/// Largest surplus or deficit of an area as a share of its load, up to 30 buses.
 const SURPLUS: f64 = 0.2;
 /// Share of the loaded buses that have a feeder, and of their load that it carries.
 const FEEDERS: (f64, f64) = (0.4, 0.3);
@@ -57,8 +57,9 @@ fn load(grid: &mut Grid, draw: &mut Draw) {
 fn area_targets_mw(grid: &Grid, draw: &mut Draw) -> Vec<f64> {
     (0..grid.areas.len())
         .map(|area| {
-            let own = grid.buses.iter().filter(|bus| bus.area == area);
-            own.map(|bus| bus.load_mw).sum::<f64>() * draw.within(1.0 - SURPLUS, 1.0 + SURPLUS)
+            let own = || grid.buses.iter().filter(|bus| bus.area == area);
+            let share = SURPLUS * (30.0 / own().count() as f64).sqrt().min(1.0);
+            own().map(|bus| bus.load_mw).sum::<f64>() * draw.within(1.0 - share, 1.0 + share)
         })
         .collect()
 }
