@@ -49,8 +49,17 @@ pub fn search(
 ) -> Outcome {
     let corridors = corridors(problem, base_mw);
     let ends: Vec<(usize, usize)> = corridors.iter().map(|corridor| corridor.areas).collect();
-    let mut search =
-        Search { problem, corridors, ends, best: start, bound, work_max, work: 0, go_on, ended: false };
+    let mut search = Search {
+        problem,
+        corridors,
+        ends,
+        best: start,
+        bound,
+        work_max,
+        work: 0,
+        go_on,
+        ended: false,
+    };
     let mut marks = vec![Mark::Undecided; search.corridors.len()];
     search.split(&mut marks);
     Outcome { best: search.best, finished: !search.ended }
@@ -114,7 +123,9 @@ impl Search<'_> {
             .map(|corridor| found.is_bridge[corridor].then(|| self.sure(corridor, &alive)))
             .collect();
         let settled = |area: usize| {
-            (0..alive.len()).filter(|&c| alive[c] && touches(self.ends[c], area)).all(|c| sure[c].is_some())
+            (0..alive.len())
+                .filter(|&c| alive[c] && touches(self.ends[c], area))
+                .all(|c| sure[c].is_some())
         };
         let settled: Vec<usize> = (0..areas).filter(|&area| settled(area)).collect();
         let known: Vec<Sure> = sure.iter().flatten().cloned().collect();
@@ -161,7 +172,8 @@ impl Search<'_> {
     /// Whether the kept corridors already join the ends of this one.
     fn closes_ring(&self, marks: &[Mark], corridor: usize) -> bool {
         let kept: Vec<bool> = marks.iter().map(|&mark| mark == Mark::Kept).collect();
-        let group = crate::grid::graph::components(self.problem.surplus_mw.len(), &self.ends, &kept).0;
+        let group =
+            crate::grid::graph::components(self.problem.surplus_mw.len(), &self.ends, &kept).0;
         let (a, b) = self.ends[corridor];
         group[a] == group[b]
     }
@@ -171,7 +183,8 @@ impl Search<'_> {
         let mut rest = alive.to_vec();
         rest[corridor] = false;
         let areas = self.ends[corridor];
-        let group = crate::grid::graph::components(self.problem.surplus_mw.len(), &self.ends, &rest).0;
+        let group =
+            crate::grid::graph::components(self.problem.surplus_mw.len(), &self.ends, &rest).0;
         let behind = group.iter().zip(&self.problem.surplus_mw);
         let flow_mw = behind.filter(|(g, _)| **g == group[areas.0]).map(|(_, s)| s).sum();
         Sure { areas, flow_mw, ties: self.corridors[corridor].ties.clone() }
@@ -179,7 +192,8 @@ impl Search<'_> {
 
     /// Least loading among the ties that the corridor may use.
     fn tie_loading(&self, sure: &Sure) -> f64 {
-        let best = sure.ties.iter().map(|&tie| sure.flow_mw.abs() / self.problem.ties[tie].rating_mw);
+        let best =
+            sure.ties.iter().map(|&tie| sure.flow_mw.abs() / self.problem.ties[tie].rating_mw);
         best.fold(f64::INFINITY, f64::min)
     }
 

@@ -216,7 +216,9 @@ pub fn document(division: &Division) -> Document {
                 Weight::Flow => "base flow",
                 Weight::Susceptance => "susceptance",
             };
-            format!("{METHOD}; lines weighted by {weight}")
+            let tried =
+                if division.both_tried { " (the better of flow and susceptance)" } else { "" };
+            format!("{METHOD}; lines weighted by {weight}{tried}")
         }),
         base_mva: grid.base_mva,
         areas: (0..grid.areas.len()).map(|area| area_figures(division, area)).collect(),
@@ -258,12 +260,14 @@ fn certainty(division: &Division) -> (&'static str, String) {
     let choices = &division.choices;
     let best = choices.best.first().map_or(0.0, |choice| choice.worst_loading);
     match choices.certainty {
-        Certainty::Enumerated => {
-            ("enumerated", format!("optimum: all {} trees of ties were evaluated", choices.evaluated))
-        }
+        Certainty::Enumerated => (
+            "enumerated",
+            format!("optimum: all {} trees of ties were evaluated", choices.evaluated),
+        ),
         Certainty::Proven => (
             "proven",
-            "optimum: proven by branch and bound, no other tree of ties has a lower worst loading".to_owned(),
+            "optimum: proven by branch and bound, no other tree of ties has a lower worst loading"
+                .to_owned(),
         ),
         Certainty::Bounded => (
             "bounded",
@@ -302,7 +306,8 @@ fn name(division: &Division, line: Option<usize>) -> Option<String> {
 }
 
 fn choice_figures(division: &Division, choice: &Choice) -> ChoiceFigures {
-    let names = |lines: &[usize]| lines.iter().filter_map(|&line| name(division, Some(line))).collect();
+    let names =
+        |lines: &[usize]| lines.iter().filter_map(|&line| name(division, Some(line))).collect();
     ChoiceFigures {
         opened: names(&choice.opened),
         kept: names(&choice.kept),

@@ -23,7 +23,9 @@ pub enum FileError {
     #[error("the grid file cannot be edited: {0}")]
     Syntax(#[from] toml_edit::TomlError),
     /// The text does not hold the grid that was divided.
-    #[error("the grid file has {found} entries of `{table}`; the grid that was divided has {expected}")]
+    #[error(
+        "the grid file has {found} entries of `{table}`; the grid that was divided has {expected}"
+    )]
     Entries {
         /// Which list.
         table: &'static str,
@@ -108,7 +110,8 @@ fn edit_areas(document: &mut DocumentMut, division: &Division) -> Result<(), Fil
     for (bus, entry) in entries(document, "bus", grid.buses.len())?.into_iter().enumerate() {
         set(entry, "area", grid.areas[grid.buses[bus].area].name.as_str().into());
     }
-    let first = document.get("area").and_then(Item::as_array_of_tables).and_then(|list| list.get(0));
+    let first =
+        document.get("area").and_then(Item::as_array_of_tables).and_then(|list| list.get(0));
     let (position, decor) = match first {
         Some(table) => (table.position(), Some(table.decor().clone())),
         None => (None, None),
@@ -135,7 +138,11 @@ fn edit_areas(document: &mut DocumentMut, division: &Division) -> Result<(), Fil
 fn caution(document: &mut DocumentMut, division: &Division, stale: bool) {
     let mut head = String::from("# Divided by hedgerow. ");
     let opened = division.price.opened.len();
-    let _ = writeln!(head, "{opened} of {} ties are left open (`closed = false`).", division.choices.ties.len());
+    let _ = writeln!(
+        head,
+        "{opened} of {} ties are left open (`closed = false`).",
+        division.choices.ties.len()
+    );
     for sentence in text::CAUTION {
         for line in wrapped(sentence, 92) {
             let _ = writeln!(head, "# {line}");
@@ -145,7 +152,10 @@ fn caution(document: &mut DocumentMut, division: &Division, stale: bool) {
         let _ = writeln!(head, "# The {} areas were proposed by the program.", proposal.area_count);
     }
     if stale {
-        let _ = writeln!(head, "# Agreed tie flows (`schedule_mw`) were taken out: a tree of ties has one flow only.");
+        let _ = writeln!(
+            head,
+            "# Agreed tie flows (`schedule_mw`) were taken out: a tree of ties has one flow only."
+        );
     }
     head.push_str("#\n");
     let Some(mut key) = document.as_table_mut().key_mut("format") else {

@@ -89,8 +89,7 @@ pub fn largest_tree(problem: &TieProblem, weight: &[f64]) -> Vec<usize> {
     let mut group: Vec<usize> = (0..problem.surplus_mw.len()).collect();
     let mut tree = Vec::new();
     for tie in order {
-        let (one, other) =
-            (group[problem.ties[tie].from_area], group[problem.ties[tie].to_area]);
+        let (one, other) = (group[problem.ties[tie].from_area], group[problem.ties[tie].to_area]);
         if one != other {
             group.iter_mut().filter(|g| **g == other).for_each(|g| *g = one);
             tree.push(tie);

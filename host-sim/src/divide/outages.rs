@@ -83,7 +83,9 @@ pub fn compare(
     let bridges = |bridge: &[bool]| (0..bridge.len()).filter(|&line| bridge[line]).collect();
     let mut inside: Vec<usize> =
         (0..ends.len()).filter(|&line| after.closed[line] && !is_tie(grid, line)).collect();
-    inside.sort_by(|&a, &b| before.flow_mw[b].abs().total_cmp(&before.flow_mw[a].abs()).then(a.cmp(&b)));
+    inside.sort_by(|&a, &b| {
+        before.flow_mw[b].abs().total_cmp(&before.flow_mw[a].abs()).then(a.cmp(&b))
+    });
     let all = inside.len();
     inside.truncate(most);
     let whole = Sensitivity::new(grid, &before.closed)?;
@@ -143,7 +145,8 @@ fn effect_before(
     let Outage::Factors(factors) = whole.outage(line)? else {
         return Ok(None);
     };
-    let mut effect = Effect { outside_mw: 0.0, outside_line: None, worst_loading: 0.0, worst_line: None };
+    let mut effect =
+        Effect { outside_mw: 0.0, outside_line: None, worst_loading: 0.0, worst_line: None };
     for (other, factor) in factors.iter().enumerate() {
         let change_mw = factor * base.flow_mw[line];
         let data = &grid.lines[other];
@@ -177,7 +180,12 @@ impl AreaOutages {
         Ok(Self { lines, sensitivity })
     }
 
-    fn effect(&self, grid: &Grid, base: &BaseCase, line: usize) -> Result<Option<Effect>, DivideError> {
+    fn effect(
+        &self,
+        grid: &Grid,
+        base: &BaseCase,
+        line: usize,
+    ) -> Result<Option<Effect>, DivideError> {
         let Ok(local) = self.lines.binary_search(&line) else {
             return Ok(None);
         };
@@ -195,7 +203,11 @@ impl AreaOutages {
 }
 
 /// Solve the first outages afresh; returns how many and the largest change outside in MW.
-fn solve_again(grid: &Grid, after: &BaseCase, rows: &[OutageRow]) -> Result<(usize, f64), DivideError> {
+fn solve_again(
+    grid: &Grid,
+    after: &BaseCase,
+    rows: &[OutageRow],
+) -> Result<(usize, f64), DivideError> {
     let mut largest_mw = 0.0_f64;
     let mut count = 0;
     for row in rows.iter().filter(|row| row.after.is_some()).take(SOLVED_AGAIN) {

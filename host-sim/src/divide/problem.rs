@@ -165,9 +165,11 @@ impl TieProblem {
         let flow_mw = self.tree_flows_mw(tree);
         let mut worst = Worst { loading: 0.0, line: None };
         let mut take = |loading: f64, line: Option<usize>| {
-            if loading > worst.loading {
-                worst = Worst { loading, line };
+            // Of lines in series, equal but for rounding, the first is named.
+            if loading > worst.loading * (1.0 + 1e-12) {
+                worst.line = line;
             }
+            worst.loading = worst.loading.max(loading);
         };
         for (&tie, flow) in tree.iter().zip(&flow_mw) {
             take(flow.abs() / self.ties[tie].rating_mw, Some(self.ties[tie].line));
@@ -214,7 +216,11 @@ impl TieProblem {
 }
 
 /// The buses and internal lines in service of one area, as a grid, with the lines' indices.
-pub(super) fn area_grid(grid: &Grid, closed: &[bool], area: usize) -> (Grid, Vec<usize>, Vec<usize>) {
+pub(super) fn area_grid(
+    grid: &Grid,
+    closed: &[bool],
+    area: usize,
+) -> (Grid, Vec<usize>, Vec<usize>) {
     let mut local = vec![usize::MAX; grid.buses.len()];
     let mut buses = Vec::new();
     for bus in (0..grid.buses.len()).filter(|&bus| grid.buses[bus].area == area) {

@@ -23,14 +23,28 @@ const ROWS: usize = 12;
 /// The summary.
 pub fn summary(d: &Document) -> String {
     let mut out = String::new();
-    let _ = writeln!(out, "{} divided: {}{}", d.grid, d.outcome, if d.stopped { " (stopped early)" } else { "" });
+    let _ = writeln!(
+        out,
+        "{} divided: {}{}",
+        d.grid,
+        d.outcome,
+        if d.stopped { " (stopped early)" } else { "" }
+    );
     if let Some(method) = &d.proposed_by {
         let _ = writeln!(out, "  areas proposed by {method}");
     }
-    let _ = writeln!(out, "\nAreas\n  {:<22}{:>7}{:>12}{:>14}{:>14}", "", "buses", "load [MW]", "surplus [MW]", "ties kept");
+    let _ = writeln!(
+        out,
+        "\nAreas\n  {:<22}{:>7}{:>12}{:>14}{:>14}",
+        "", "buses", "load [MW]", "surplus [MW]", "ties kept"
+    );
     for area in &d.areas {
         let ties = format!("{} of {}", area.ties_after, area.ties_before);
-        let _ = writeln!(out, "  {:<22}{:>7}{:>12.1}{:>+14.1}{:>14}", area.name, area.buses, area.load_mw, area.surplus_mw, ties);
+        let _ = writeln!(
+            out,
+            "  {:<22}{:>7}{:>12.1}{:>+14.1}{:>14}",
+            area.name, area.buses, area.load_mw, area.surplus_mw, ties
+        );
     }
     choices(&mut out, d);
     price(&mut out, d);
@@ -70,12 +84,22 @@ fn listed(names: &[String]) -> String {
 }
 
 fn choices(out: &mut String, d: &Document) {
-    let _ = writeln!(out, "\nTies to leave open ({} ties, {} trees of ties)", d.ties.len(), tree_count(d));
+    let _ = writeln!(
+        out,
+        "\nTies to leave open ({} ties, {} trees of ties)",
+        d.ties.len(),
+        tree_count(d)
+    );
     let _ = writeln!(out, "  {}", d.certainty);
     if let Some(within) = d.trees_within_ratings {
         let _ = writeln!(out, "  trees with every line within its rating: {within}");
     }
-    let _ = writeln!(out, "  worst loading before: {:.1} % on {}", 100.0 * d.worst_loading_before, line_of(&d.worst_line_before));
+    let _ = writeln!(
+        out,
+        "  worst loading before: {:.1} % on {}",
+        100.0 * d.worst_loading_before,
+        line_of(&d.worst_line_before)
+    );
     for choice in d.choices.iter().take(ROWS) {
         let _ = writeln!(
             out,
@@ -126,18 +150,32 @@ fn price(out: &mut String, d: &Document) {
         );
     }
     let lost = d.lost_to_n1.len();
-    let _ = writeln!(out, "  lines whose single outage now splits the grid: {lost} ({})", listed(&d.lost_to_n1));
+    let _ = writeln!(
+        out,
+        "  lines whose single outage now splits the grid: {lost} ({})",
+        listed(&d.lost_to_n1)
+    );
 }
 
 fn outages(out: &mut String, d: &Document) {
-    let _ = writeln!(out, "\nLargest flow change outside the area, per outage inside it [MW]\n  {:<20}{:>12}{:>12}  on", "", "before", "after");
+    let _ = writeln!(
+        out,
+        "\nLargest flow change outside the area, per outage inside it [MW]\n  {:<20}{:>12}{:>12}  on",
+        "", "before", "after"
+    );
     let outside = |effect: &Option<EffectFigures>| match effect {
         Some(effect) => format!("{:.3}", effect.outside_mw),
         None => "splits".to_owned(),
     };
     for row in d.outages.iter().take(ROWS) {
         let on = row.before.as_ref().map_or("-", |effect| line_of(&effect.outside_line));
-        let _ = writeln!(out, "  {:<20}{:>12}{:>12}  {on}", row.line, outside(&row.before), outside(&row.after));
+        let _ = writeln!(
+            out,
+            "  {:<20}{:>12}{:>12}  {on}",
+            row.line,
+            outside(&row.before),
+            outside(&row.after)
+        );
     }
     if d.outages.len() > ROWS {
         let _ = writeln!(out, "  and {} more in outages.csv", d.outages.len() - ROWS);

@@ -66,7 +66,8 @@ fn area_targets_mw(grid: &Grid, draw: &mut Draw) -> Vec<f64> {
 
 /// Share an area's generation among units at buses of its own.
 fn feed(grid: &mut Grid, area: usize, target_mw: f64, draw: &mut Draw) {
-    let own: Vec<usize> = (0..grid.buses.len()).filter(|&bus| grid.buses[bus].area == area).collect();
+    let own: Vec<usize> =
+        (0..grid.buses.len()).filter(|&bus| grid.buses[bus].area == area).collect();
     let mut at: Vec<usize> = own.iter().copied().filter(|_| draw.share() < FED).collect();
     if at.is_empty() {
         at.push(own[draw.below(own.len())]);
