@@ -14,11 +14,6 @@ use hedgerow::divide::base::{BaseCase, with_areas};
 use hedgerow::divide::propose::{Weight, propose};
 use hedgerow_tests::table::data_grid;
 
-/// Whether the long sets run whole.
-fn long() -> bool {
-    std::env::var_os("HEDGEROW_LONG").is_some_and(|value| value == "1")
-}
-
 /// Give every line 1.5 times the larger of its base flow and 5 % of the largest.
 fn rate_by_base_flow(grid: &mut Grid) {
     let base_mw = BaseCase::of_file(grid).unwrap().flow_mw;

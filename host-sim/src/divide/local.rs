@@ -16,10 +16,10 @@ use rand::{Rng, SeedableRng, rngs::ChaCha8Rng};
 use super::problem::{TieProblem, Worst};
 
 /// Starting trees drawn beside the ones with a reason.
-const DRAWN_STARTS: usize = 6;
+const DRAWN_STARTS: usize = 12;
 
 /// Starts a few random exchanges away from the best so far.
-const KICKS: usize = 60;
+const KICKS: usize = 100;
 
 /// Steps (a line times a tie) after which no more kicks are given.
 const WORK_MAX: u64 = 600_000_000;

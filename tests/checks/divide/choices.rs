@@ -1,6 +1,6 @@
 //! The choice of ties: exact against brute force, quick against exact, bounds.
 
-use super::{long, made_up, made_up_of, published, split_39};
+use super::{made_up, made_up_of, published, split_39};
 use hedgerow::case::model::Grid;
 use hedgerow::divide::base::{BaseCase, is_tie};
 use hedgerow::divide::{Certainty, Choices, Settings, choose};
@@ -112,7 +112,7 @@ fn optimum_of_the_published_systems_is_that_of_brute_force() {
 /// Source: own exact optimum (branch and bound, itself held against enumeration) over seeded made-up grids; tolerance 2 % on average.
 #[test]
 fn quick_search_is_within_two_percent_of_the_optimum_on_average() {
-    let seeds = if long() { 200 } else { 60 };
+    let seeds = 200;
     let (mut sum, mut worst, mut hit) = (0.0, 0.0_f64, 0);
     for seed in 0..seeds {
         let choices = chosen(&made_up_of(3 + seed as usize % 8, seed), &splitting(u64::MAX));
@@ -135,7 +135,7 @@ fn quick_search_is_within_two_percent_of_the_optimum_on_average() {
 /// Source: enumeration of every tree on seeded made-up grids; tolerance 1e-9.
 #[test]
 fn splitting_and_every_bound_hold_against_enumeration() {
-    for seed in 0..if long() { 40 } else { 16 } {
+    for seed in 0..40 {
         let grid = made_up(seed);
         let all = chosen(&grid, &Settings { trees_max: 300_000, ..Settings::default() });
         if all.certainty != Certainty::Enumerated {
