@@ -262,6 +262,22 @@ impl<const B: usize, const R: usize> Network<B, R> {
         self.grow_tree(&plan.lines);
     }
 
+    /// The load at a bus falls by `power`, pu: its load part leaves flows and angles.
+    pub fn relieve<const X: usize>(
+        &self,
+        plan: &Plan<B, X, R>,
+        part: &mut LoadPart<R>,
+        bus: usize,
+        power: f32,
+    ) {
+        let mut column = [0.0; B];
+        for (row, value) in column.iter_mut().enumerate() {
+            *value = entry(&self.x, row, bus);
+        }
+        self.shift_load_part(plan, part, &column, power);
+        part.load -= power;
+    }
+
     fn set_closed(&mut self, index: usize, closed: bool) {
         if let Some(slot) = self.closed.get_mut(index) {
             *slot = closed;
@@ -335,12 +351,7 @@ impl<const B: usize, const R: usize> Network<B, R> {
         put(&mut part.flow, index, 0.0);
         if root_kept {
             // The lost load leaves from the kept end of the bridge.
-            let mut column = [0.0; B];
-            for (bus, value) in column.iter_mut().enumerate() {
-                *value = entry(&self.x, bus, end);
-            }
-            self.shift_load_part(plan, part, &column, into_lost);
-            part.load -= into_lost;
+            self.relieve(plan, part, end, into_lost);
         } else {
             // With the root in the lost piece the bridge carried the whole kept load.
             self.move_root(plan, part, end);
