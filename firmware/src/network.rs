@@ -332,7 +332,6 @@ impl<const B: usize, const R: usize> Network<B, R> {
         for (kept, &side) in self.kept.iter_mut().zip(&from_side) {
             *kept = *kept && side == keep_from;
         }
-        put(&mut part.flow, index, 0.0);
         if root_kept {
             // The lost load leaves from the kept end of the bridge.
             let mut column = [0.0; B];
@@ -342,7 +341,8 @@ impl<const B: usize, const R: usize> Network<B, R> {
             self.shift_load_part(plan, part, &column, into_lost);
             part.load -= into_lost;
         } else {
-            // With the root in the lost piece the bridge carried the whole kept load.
+            // With the root in the lost piece the bridge carried the whole kept load;
+            // the path to the new root still leads over it.
             self.move_root(plan, part, end);
             part.load = -into_lost;
         }
