@@ -344,7 +344,7 @@ impl<const B: usize, const R: usize> Network<B, R> {
             // With the root in the lost piece the bridge carried the whole kept load;
             // the path to the new root still leads over it.
             self.move_root(plan, part, end);
-            part.load = -into_lost;
+            part.load = 0.0 - into_lost; // never a negative zero
         }
         self.forget_lost(plan, part);
     }
