@@ -106,10 +106,8 @@ impl World {
         let root = kept.iter().position(|&kept| kept).unwrap();
         let lines = &self.area.lines;
         let x = inverse_laplacian(self.area.buses, lines, &self.line_closed, &kept, root);
-        let angle: Vec<f64> = x
-            .iter()
-            .map(|row| row.iter().zip(&injection).map(|(x, p)| x * p).sum())
-            .collect();
+        let angle: Vec<f64> =
+            x.iter().map(|row| row.iter().zip(&injection).map(|(x, p)| x * p).sum()).collect();
         let flow = lines.iter().zip(&self.line_closed).map(|(line, &closed)| {
             let across = angle[usize::from(line.from)] - angle[usize::from(line.to)];
             if closed { f64::from(line.susceptance) * across } else { 0.0 }

@@ -6,17 +6,8 @@ use hedgerow_firmware::law::kernel::{
 use nalgebra::SMatrix;
 use proptest::prelude::*;
 
-const SPECIAL: [f32; 9] = [
-    f32::NAN,
-    f32::INFINITY,
-    f32::NEG_INFINITY,
-    f32::MAX,
-    f32::MIN_POSITIVE,
-    0.0,
-    -0.0,
-    1.0,
-    -1.0,
-];
+const SPECIAL: [f32; 9] =
+    [f32::NAN, f32::INFINITY, f32::NEG_INFINITY, f32::MAX, f32::MIN_POSITIVE, 0.0, -0.0, 1.0, -1.0];
 
 #[test]
 fn smaller_and_larger_give_the_second_when_the_first_is_no_number() {

@@ -14,13 +14,7 @@ fn short(lowest_rung: u8) -> Settings {
 
 fn finding(bits: u8) -> Finding {
     let bit = |place: u8| bits >> place & 1 == 1;
-    Finding {
-        clear: bit(0),
-        hard: bit(1),
-        conditional: bit(2),
-        witness: bit(3),
-        shedding: bit(4),
-    }
+    Finding { clear: bit(0), hard: bit(1), conditional: bit(2), witness: bit(3), shedding: bit(4) }
 }
 
 /// What must hold for one tick, whatever came before.

@@ -286,7 +286,8 @@ fn a_tie_that_nobody_asks_for_stays_on_schedule() {
     let snapshot = world.measure();
     for tick in 0..100 {
         snapshot.tell(tick, |m| steward.hear(m));
-        let far = TieTerms { open: true, distance: 4, tick, ..any_terms(&mut Rng::new(tick.into())) };
+        let far =
+            TieTerms { open: true, distance: 4, tick, ..any_terms(&mut Rng::new(tick.into())) };
         steward.hear(&Message::TieTerms(far));
         let said = listen(&mut steward, tick);
         assert_eq!((said.ties_open, said.terms[0].deviation), (0, [0.0, 0.0]));

@@ -93,7 +93,8 @@ impl Pair {
     /// The denominator as the steward's own sensitivities give it.
     fn denominator32(&self, index: usize) -> f32 {
         let line = &self.area.lines[index];
-        1.0 - self.network.weight(line, line.from.into()) + self.network.weight(line, line.to.into())
+        1.0 - self.network.weight(line, line.from.into())
+            + self.network.weight(line, line.to.into())
     }
 
     fn live_lines(&self) -> Vec<usize> {

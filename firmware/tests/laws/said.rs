@@ -23,11 +23,8 @@ fn spoil(snapshot: &mut Snapshot, rng: &mut Rng, share: f64) {
             }
         }
     }
-    let statuses = [
-        &mut snapshot.line_closed,
-        &mut snapshot.tie_closed,
-        &mut snapshot.unit_in_service,
-    ];
+    let statuses =
+        [&mut snapshot.line_closed, &mut snapshot.tie_closed, &mut snapshot.unit_in_service];
     for closed in statuses.into_iter().flatten() {
         *closed ^= rng.chance(0.1 * share);
     }
@@ -53,7 +50,10 @@ fn any_message(rng: &mut Rng, tick: u32) -> Message<'static> {
             round: rng.index(40) as u16,
             ready: rng.chance(0.8),
             bid: [rng.between32(-60.0, 60.0), rng.between32(-60.0, 60.0)],
-            bid_before: [rng.between32(-60.0, 60.0), if rng.chance(0.1) { rng.wild() } else { 0.0 }],
+            bid_before: [
+                rng.between32(-60.0, 60.0),
+                if rng.chance(0.1) { rng.wild() } else { 0.0 },
+            ],
             deviation: [rng.between32(-1.0, 1.0), if rng.chance(0.1) { rng.wild() } else { 0.0 }],
             open: rng.chance(0.8),
             detached: rng.chance(0.1),
@@ -68,7 +68,12 @@ fn check(area: &Area, steward: &Steward32, rung: Rung, said: &Said) -> Result<()
     for number in &said.numbers {
         prop_assert!(number.is_finite(), "said {number}");
         let negative_zero = number.to_bits() == (-0.0_f32).to_bits();
-        prop_assert!(!negative_zero, "said a negative zero: load {} {:?}", said.load_mw, said.terms);
+        prop_assert!(
+            !negative_zero,
+            "said a negative zero: load {} {:?}",
+            said.load_mw,
+            said.terms
+        );
     }
     for (index, unit) in area.units.iter().enumerate() {
         let p = steward.setpoint(index);
@@ -82,7 +87,10 @@ fn check(area: &Area, steward: &Steward32, rung: Rung, said: &Said) -> Result<()
         };
         // A unit that is out of service is written as zero.
         let inside = p == 0.0 || (p >= low && p <= high);
-        prop_assert!(said.verdict == Verdict::Blind || !movable || inside, "unit {index}: {p} on {rung:?}");
+        prop_assert!(
+            said.verdict == Verdict::Blind || !movable || inside,
+            "unit {index}: {p} on {rung:?}"
+        );
     }
     for (index, shed) in said.shed_mw.iter().enumerate() {
         prop_assert!(*shed >= 0.0, "feeder {index}: {shed}");

@@ -22,8 +22,7 @@ impl Case {
         let mut rng = Rng::new(seed);
         let (rows, cols) = (1 + rng.index(30), 1 + rng.index(24));
         let dense = rng.between(0.05, 1.0);
-        let mut coefficient =
-            || if rng.chance(dense) { rng.between32(-1.5, 1.5) } else { 0.0 };
+        let mut coefficient = || if rng.chance(dense) { rng.between32(-1.5, 1.5) } else { 0.0 };
         let a: Vec<Vec<f32>> =
             (0..cols).map(|_| (0..rows).map(|_| coefficient()).collect()).collect();
         let low: Vec<f32> = (0..cols).map(|_| rng.between32(-5.0, 3.0)).collect();
@@ -59,7 +58,9 @@ impl Case {
         let decade = 10_f64.powf(rng.between(-3.0, 3.0));
         let filled = rng.between(0.02, 1.0);
         let y = (0..rows)
-            .map(|_| if rng.chance(filled) { rng.between32(-1.0, 1.0) * decade as f32 } else { 0.0 })
+            .map(
+                |_| if rng.chance(filled) { rng.between32(-1.0, 1.0) * decade as f32 } else { 0.0 },
+            )
             .collect();
         Self { a, row_low, row_high, error, low, high, point, y }
     }
@@ -100,9 +101,10 @@ impl Case {
             let (mut worst, mut row, mut sign) = (0.0, 0, 0.0);
             for i in 0..self.row_low.len() {
                 let at: f64 = self.a.iter().zip(&x).map(|(c, x)| f64::from(c[i]) * x).sum();
-                for (by, s) in
-                    [(f64::from(self.row_low[i]) - at, 1.0), (at - f64::from(self.row_high[i]), -1.0)]
-                {
+                for (by, s) in [
+                    (f64::from(self.row_low[i]) - at, 1.0),
+                    (at - f64::from(self.row_high[i]), -1.0),
+                ] {
                     if by > worst {
                         (worst, row, sign) = (by, i, s);
                     }
