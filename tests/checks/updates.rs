@@ -74,9 +74,9 @@ impl Desk {
         let mut worst = 0.0_f64;
         for index in self.live() {
             let line = &area.lines[index];
-            for bus in 0..area.buses {
-                let difference = x[usize::from(line.from)][bus] - x[usize::from(line.to)][bus];
-                let exact = f64::from(line.susceptance) * difference;
+            let ends = x[usize::from(line.from)].iter().zip(&x[usize::from(line.to)]);
+            for (bus, (from, to)) in ends.enumerate() {
+                let exact = f64::from(line.susceptance) * (from - to);
                 worst = worst.max((f64::from(network.weight(line, bus)) - exact).abs());
             }
         }

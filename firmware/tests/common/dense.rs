@@ -47,10 +47,8 @@ pub fn inverse_laplacian(
     }
     let grounded = |bus: usize| bus == root || !kept[bus];
     for bus in (0..buses).filter(|&bus| grounded(bus)) {
-        for other in 0..buses {
-            laplacian[bus][other] = 0.0;
-            laplacian[other][bus] = 0.0;
-        }
+        laplacian[bus].fill(0.0);
+        laplacian.iter_mut().for_each(|row| row[bus] = 0.0);
         laplacian[bus][bus] = 1.0;
     }
     let mut inverse = invert(laplacian);

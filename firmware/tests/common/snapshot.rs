@@ -47,8 +47,8 @@ impl Snapshot {
         let mut bits = [[0; 16]; 3];
         let [a, b, c, d, e, f] = &mut rooms;
         let [g, h, i] = &mut bits;
-        let pack = |list: &[Reading], room| pack_readings(list.to_vec().into_iter(), room).unwrap();
-        let flags = |list: &[bool], room| pack_bits(list.to_vec().into_iter(), room).unwrap();
+        let pack = |list: &[Reading], room| pack_readings(list.iter().copied(), room).unwrap();
+        let flags = |list: &[bool], room| pack_bits(list.iter().copied(), room).unwrap();
         hear(&Message::Measurements(Measurements {
             tick,
             freq_dev_hz: pack(&self.freq_dev_hz, &mut a[..]),

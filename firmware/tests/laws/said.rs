@@ -1,6 +1,6 @@
 //! What is said: inside its range, finite, without a negative zero, whatever is heard.
 //!
-//! Source of the figures: control law, acceptance properties 1 and 2.
+//! Figures: the project's own requirements; ranges are compared exactly, as `f32`.
 
 use crate::common::{Area, Rng, Said, Snapshot, Steward32, World, listen};
 use crate::share;
