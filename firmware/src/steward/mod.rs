@@ -206,7 +206,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         let (hard, conditional) = self.judge(clear);
         let witness = self.run_shadow();
         self.speak_verdict(clear, violation, still);
-        let total = self.write_feeders(&wish, violation);
+        let total = self.write_feeders(&wish, violation, sight);
         let found = Finding { clear, hard, conditional, witness, shedding: total > 0.01 };
         let step = self.ladder.tick(found, &settings);
         self.speak(tick, step, say);
