@@ -191,12 +191,9 @@ impl Conic {
         }
         let rows = CscMatrix::new_from_triplets(rhs.len(), n, i, j, v);
         let all: Vec<usize> = (0..n).collect();
-        let curvature =
-            CscMatrix::new_from_triplets(n, n, all.clone(), all, self.curve.clone());
-        let cones: [SupportedConeT<f64>; 2] = [
-            SupportedConeT::ZeroConeT(self.equal.len()),
-            NonnegativeConeT(self.at_most.len()),
-        ];
+        let curvature = CscMatrix::new_from_triplets(n, n, all.clone(), all, self.curve.clone());
+        let cones: [SupportedConeT<f64>; 2] =
+            [SupportedConeT::ZeroConeT(self.equal.len()), NonnegativeConeT(self.at_most.len())];
         let settings = DefaultSettings {
             verbose: false,
             max_threads: 1,
