@@ -2,4 +2,7 @@
 
 pub mod areas;
 pub mod board;
+pub mod border;
+pub mod detector;
+pub mod exact;
 pub mod programme;

@@ -18,6 +18,15 @@ pub enum Kind {
     Other,
 }
 
+/// How limits move with a parameter.
+#[derive(Clone, Debug)]
+pub struct Direction {
+    /// Rate of each lower limit.
+    pub low: Vec<f64>,
+    /// Rate of each upper limit.
+    pub high: Vec<f64>,
+}
+
 /// One problem, physical pu.
 #[derive(Clone, Debug)]
 pub struct Programme {
@@ -133,6 +142,36 @@ impl Programme {
             conic.at_most(below, -self.l[i]);
         }
         conic.solve().expect("the least violation always exists")[n]
+    }
+
+    /// Farthest `t` at which limits moved by `t` times a direction leave `slack` pu of violation.
+    ///
+    /// At that `t` the least violation is `slack`; without slack the problem is just feasible.
+    pub fn farthest(&self, direction: &Direction, slack: f64) -> Option<f64> {
+        let n = self.cols();
+        let mut conic = Conic::new(n + 1);
+        conic.slope[n] = -1.0;
+        conic.at_most(vec![(n, 1.0)], 1e3);
+        self.add_ranges(&mut conic);
+        for i in 0..self.rows() {
+            let mut terms = sparse(&self.a[i]);
+            let mut below = negative(&terms);
+            terms.push((n, -direction.high[i]));
+            below.push((n, direction.low[i]));
+            conic.at_most(terms, self.r[i] + slack);
+            conic.at_most(below, slack - self.l[i]);
+        }
+        conic.solve().map(|x| x[n])
+    }
+
+    /// The problem with its limits moved.
+    pub fn moved(&self, direction: &Direction, t: f64) -> Self {
+        let mut out = self.clone();
+        for i in 0..self.rows() {
+            out.l[i] += t * direction.low[i];
+            out.r[i] += t * direction.high[i];
+        }
+        out
     }
 
     fn add_ranges(&self, conic: &mut Conic) {
