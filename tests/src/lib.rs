@@ -5,4 +5,5 @@ pub mod board;
 pub mod border;
 pub mod detector;
 pub mod exact;
+pub mod grounded;
 pub mod programme;

@@ -2,7 +2,7 @@
 
 use super::pairs;
 use hedgerow_tests::areas::Chance;
-use hedgerow_tests::board::{Board, CLAMP};
+use hedgerow_tests::board::Board;
 use hedgerow_tests::border::Border;
 use hedgerow_tests::detector::{Facts, trial};
 use hedgerow_tests::programme::Programme;
@@ -33,8 +33,7 @@ fn shuffled(programme: &Programme, chance: &mut Chance) -> Programme {
 /// All ways to come to a verdict on a problem, the other side of the border being where a warm start comes from.
 fn verdicts(pair: &Border, programme: &Programme, other: &Programme) -> Vec<(&'static str, bool)> {
     let mut chance = Chance::new(pair.seed);
-    let cold =
-        |name, per_tick| (name, verdict(&mut Board::new(programme), programme, per_tick));
+    let cold = |name, per_tick| (name, verdict(&mut Board::new(programme), programme, per_tick));
     let mut all = vec![cold("5 a tick", 5), cold("20 a tick", 20), cold("50 a tick", 50)];
     let order = shuffled(programme, &mut chance);
     all.push(("row order", verdict(&mut Board::new(&order), &order, 20)));
@@ -46,7 +45,7 @@ fn verdicts(pair: &Border, programme: &Programme, other: &Programme) -> Vec<(&'s
     warm.run(2000);
     warm.go_on_with(programme);
     all.push(("warm start", verdict(&mut warm, programme, 20)));
-    assert!(warm.dual_max() <= CLAMP);
+    assert!(warm.dual_max() <= warm.clamp());
     all
 }
 
