@@ -123,12 +123,12 @@ fn flows_mw(grid: &Grid) -> Result<Vec<f64>, DcError> {
 fn rate(grid: &mut Grid, draw: &mut Draw) -> Result<(), DcError> {
     let flow_mw = flows_mw(grid)?;
     let mean_mw = flow_mw.iter().map(|flow| flow.abs()).sum::<f64>() / flow_mw.len().max(1) as f64;
-    for line in 0..grid.lines.len() {
+    for (line, base_mw) in flow_mw.iter().enumerate() {
         let tie =
             area(&grid.buses, grid.lines[line].from) != area(&grid.buses, grid.lines[line].to);
         // Ties are built for help, so they have more to spare.
         let floor_mw = mean_mw * if tie { draw.within(2.0, 4.0) } else { draw.within(0.6, 1.6) };
-        let wanted_mw = (flow_mw[line].abs() / draw.within(0.35, 0.78)).max(floor_mw);
+        let wanted_mw = (base_mw.abs() / draw.within(0.35, 0.78)).max(floor_mw);
         grid.lines[line].rating_mw = (wanted_mw / 5.0).ceil() * 5.0;
     }
     Ok(())

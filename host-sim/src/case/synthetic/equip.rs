@@ -26,8 +26,8 @@ pub(super) fn equip(grid: &mut Grid, draw: &mut Draw) {
     let total_mw: f64 = grid.buses.iter().map(|bus| bus.load_mw).sum();
     let scale = total_mw / wanted_mw.iter().sum::<f64>();
     wanted_mw.iter_mut().for_each(|target| *target *= scale);
-    for area in 0..grid.areas.len() {
-        feed(grid, area, wanted_mw[area], draw);
+    for (area, wanted_mw) in wanted_mw.into_iter().enumerate() {
+        feed(grid, area, wanted_mw, draw);
     }
     // Base points are rounded to a tenth; the last unit takes up what that leaves.
     let given_mw: f64 = grid.units.iter().map(|unit| unit.base_mw).sum();
@@ -130,7 +130,7 @@ fn feeders(grid: &mut Grid, draw: &mut Draw) {
         let (area, load_mw) = (grid.buses[bus].area, grid.buses[bus].load_mw);
         let drawn = draw.share() < FEEDERS.0;
         let feeder_mw = rounded(load_mw * FEEDERS.1, 1);
-        if feeder_mw < 1.0 || !(drawn || !served[area]) {
+        if feeder_mw < 1.0 || (served[area] && !drawn) {
             continue;
         }
         served[area] = true;
