@@ -147,6 +147,7 @@ fn outages_csv(document: &figures::Document) -> Result<String, csv::Error> {
     table.write_record([
         "line",
         "area",
+        "pocket",
         "flow_before_mw",
         "flow_after_mw",
         "outside_before_mw",
@@ -171,6 +172,7 @@ fn outages_csv(document: &figures::Document) -> Result<String, csv::Error> {
         table.write_record([
             row.line.clone(),
             row.area.clone(),
+            row.pocket.map(|pocket| pocket.to_string()).unwrap_or_default(),
             row.flow_before_mw.to_string(),
             row.flow_after_mw.to_string(),
             before.0,

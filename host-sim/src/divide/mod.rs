@@ -262,7 +262,10 @@ pub fn choose(
         evaluated: 0,
         within_ratings: None,
         best: Vec::new(),
-        certainty: Certainty::BestFound,
+        certainty: match relaxed.bound > 0.0 {
+            true => Certainty::Bounded,
+            false => Certainty::BestFound,
+        },
         bound: relaxed.bound,
         quick_loading,
     };

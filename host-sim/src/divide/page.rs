@@ -277,13 +277,24 @@ fn outages(d: &Document) -> Markup {
                 @if d.outages.len() > ROWS { "The first " (ROWS) " of " (d.outages.len()) "; all are in outages.csv. " }
                 @if d.outages_left_out > 0 { (d.outages_left_out) " lines with small base flow were left out." }
             }
+            p { "Outages after which a line is above its rating: " (d.overloading_before) " before, " (d.overloading_after) " after." }
+            h3 { "Pockets" }
+            p.note { "Joined to the rest by bridges only: an outage inside one leaves all flows outside it alone." }
+            table {
+                thead { tr { th.num { "Pocket" } th { "Area" } th.num { "Buses" } th.num { "Lines" } } }
+                tbody { @for (index, pocket) in d.pockets.iter().take(ROWS).enumerate() { tr {
+                    td.num { (index + 1) } td { (pocket.area) } td.num { (pocket.buses) } td.num { (pocket.lines) }
+                } } }
+            }
+            @if d.pockets.len() > ROWS { p.note { "and " (d.pockets.len() - ROWS) " more in result.json." } }
+            h3 { "Outages" }
             table {
                 thead {
-                    tr { th rowspan="2" { "Line" } th rowspan="2" { "Area" } th colspan="3" { "Before" } th colspan="3" { "After" } }
+                    tr { th rowspan="2" { "Line" } th rowspan="2" { "Area" } th.num rowspan="2" { "Pocket" } th colspan="3" { "Before" } th colspan="3" { "After" } }
                     tr { th.num { "Outside [MW]" } th { "on" } th.num { "Worst" } th.num { "Outside [MW]" } th { "on" } th.num { "Worst" } }
                 }
                 tbody { @for o in d.outages.iter().take(ROWS) { tr {
-                    th scope="row" { (o.line) } td { (o.area) } (effect(&o.before)) (effect(&o.after))
+                    th scope="row" { (o.line) } td { (o.area) } td.num { @match o.pocket { Some(pocket) => { (pocket) } None => { "-" } } } (effect(&o.before)) (effect(&o.after))
                 } } }
             }
         }

@@ -141,6 +141,20 @@ fn price_of_the_ring_is_the_one_worked_out_by_hand() {
 }
 
 #[test]
+fn a_path_has_no_pocket_and_every_area_of_the_example_has_one() {
+    assert!(divided(&ring(), &Settings::default()).outages.pockets.is_empty());
+    let division = divided(&builtin_grid(), &Settings::default());
+    let outages = &division.outages;
+    for area in 0..3 {
+        let own = outages.pockets.iter().filter(|pocket| pocket.area == area);
+        assert!(own.map(|pocket| pocket.buses).max().is_some_and(|buses| buses > 3), "{area}");
+    }
+    for row in &outages.rows {
+        assert_eq!(row.after.is_some(), outages.pocket_of_line[row.line].is_some(), "{}", row.line);
+    }
+}
+
+#[test]
 fn relaxed_bound_of_the_ring_shares_the_surplus_between_both_ties() {
     // 30 MW on each of the ties of A, of 50 MW.
     let grid = ring();

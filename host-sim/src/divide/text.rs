@@ -180,6 +180,13 @@ fn outages(out: &mut String, d: &Document) {
     if d.outages.len() > ROWS {
         let _ = writeln!(out, "  and {} more in outages.csv", d.outages.len() - ROWS);
     }
+    let _ = writeln!(
+        out,
+        "  pockets: {}; outages after which a line is above its rating: {} before, {} after",
+        d.pockets.len(),
+        d.overloading_before,
+        d.overloading_after
+    );
     if d.outages_left_out > 0 {
         let _ = writeln!(out, "  {} lines with small base flow were left out", d.outages_left_out);
     }
