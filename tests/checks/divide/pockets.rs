@@ -24,8 +24,8 @@ fn largest_outside_pu(name: &str, grid: &Grid) -> (usize, f64) {
     assert!(closed_ties.into_iter().all(|line| bridge[line]), "{name}");
     let mut largest = 0.0_f64;
     let mut count = 0;
-    for line in 0..grid.lines.len() {
-        if division.after.closed[line] && !bridge[line] {
+    for (line, _) in bridge.iter().enumerate().filter(|(_, is_bridge)| !**is_bridge) {
+        if division.after.closed[line] {
             let change_mw = change_outside_mw(grid, &division.after, line).unwrap();
             largest = largest.max(change_mw / grid.base_mva);
             count += 1;
