@@ -19,8 +19,9 @@ const CLIMB_S: f64 = 5.0;
 const PROOF_TICKS: u16 = 5;
 /// Load returns at most at this share of the units' ramps, so that they can follow.
 const RETURN_SHARE: f64 = 0.5;
-/// Price curvature of a tie deviation: small, so that the price decides.
-pub(crate) const TIE_CURVATURE: f64 = 0.05;
+/// Price curvature of a tie deviation and of a mid-tie angle deviation at each end,
+/// per pu squared: small, so that the price decides.
+pub const TIE_CURVATURE: f64 = 0.05;
 
 pub(super) fn per_tick(grid: &Grid, play: &Play, area: &Area) -> Settings {
     let (tick_s, s) = (play.run.tick_s, &play.steward);
