@@ -13,7 +13,9 @@ use clap::{Parser, Subcommand};
 
 use crate::report::summary::Colour;
 
+pub mod bench;
 pub mod check;
+pub mod fit;
 pub mod import;
 pub mod new;
 
@@ -57,6 +59,10 @@ pub struct Cli {
 pub enum Command {
     /// Run a disturbance in closed loop, judge its end and write the report.
     Rehearse(rehearse::Args),
+    /// Run a play with boards in the loop, in lockstep, and keep every frame.
+    Bench(bench::Args),
+    /// Show whether each area's steward fits a chip, from images built and run now.
+    Fit(fit::Args),
 }
 
 /// Run the command that was given.
@@ -65,6 +71,8 @@ pub enum Command {
 pub fn run(cli: &Cli) -> Result<Ending, Failure> {
     match &cli.command {
         Command::Rehearse(args) => rehearse::run(args),
+        Command::Bench(args) => bench::run(args),
+        Command::Fit(args) => fit::run(args),
     }
 }
 
