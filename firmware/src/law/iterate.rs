@@ -4,38 +4,105 @@
 //! ranges and the duals inside the clamp, whatever the numbers were, so nothing
 //! winds up. Warm start: the state is kept from tick to tick.
 
-use super::kernel::{clip, mat_vec, soft, sqrt};
+use super::kernel::{clip, mat_vec, max, soft, sqrt};
 use super::limits::Limits;
 use super::scale::Scaled;
 
-/// Steps after a restart for which the momentum still grows; then it is held.
-const MOMENTUM_LEN: usize = 256;
+/// A number in two parts, the second below the rounding of the first.
+///
+/// A dual of 100 has a last digit of 8e-6, and a step shorter than that would be
+/// lost: rows would then rest up to 8e-6 / sigma off their limits. With the rest
+/// kept, the floor of the set-points falls from 1e-2 to 1e-5 pu (worst of 154 problems).
+#[derive(Clone, Copy, Debug)]
+struct Fine {
+    head: f32,
+    rest: f32,
+}
 
-/// Momentum by steps since the last restart: (tau - 1) / tau', tau' = (1 + sqrt(1 + 4 tau^2)) / 2.
-static MOMENTUM: [f32; MOMENTUM_LEN] = momentum();
+impl Fine {
+    const ZERO: Self = Self { head: 0.0, rest: 0.0 };
 
-const fn momentum() -> [f32; MOMENTUM_LEN] {
-    let mut table = [0.0; MOMENTUM_LEN];
-    let mut tau = 1.0_f64;
-    let mut k = 0;
-    while k < MOMENTUM_LEN {
-        // Newton from above: 1 + 4 tau^2 lies between (2 tau)^2 and (2 tau + 1)^2.
-        let square = 1.0 + 4.0 * tau * tau;
-        let mut root = 2.0 * tau + 1.0;
-        let mut step = 0;
-        while step < 8 {
-            root = 0.5 * (root + square / root);
-            step += 1;
-        }
-        let next = 0.5 * (1.0 + root);
-        #[allow(clippy::indexing_slicing)] // evaluated by the compiler, never on a board
-        {
-            table[k] = ((tau - 1.0) / next) as f32;
-        }
-        tau = next;
-        k += 1;
+    /// The sum with an ordinary number; exact but for the rounding of the rest.
+    ///
+    /// Source: error-free sum, D. Knuth, "The Art of Computer Programming", vol. 2, 4.2.2.
+    #[inline(always)]
+    fn plus(self, by: f32) -> Self {
+        let sum = self.head + by;
+        let shared = sum - self.head;
+        let lost = (self.head - (sum - shared)) + (by - shared) + self.rest;
+        let head = sum + lost;
+        Self { head, rest: lost - (head - sum) }
     }
-    table
+
+    /// The difference, rounded once.
+    #[inline(always)]
+    fn minus(self, other: Self) -> f32 {
+        (self.head - other.head) + (self.rest - other.rest)
+    }
+}
+
+/// Share of the remembered curvature that is kept from step to step: about 100 steps of memory.
+const CURVATURE_KEEP: f32 = 0.99;
+/// Head-room over the curvature met on the last step, which is a lower bound.
+const CURVATURE_MARGIN: f32 = 1.5;
+/// The step is never longer than this many safe steps.
+const STEP_MOST: f32 = 8.0;
+
+/// Clamp of the scaled duals in an ordinary area.
+const CLAMP: f32 = 2000.0;
+/// Scaled range up to which an area is ordinary.
+const REACH: f32 = 20.0;
+
+/// Clamp of the scaled duals that lets a proof outweigh the costs.
+///
+/// `reach` is the largest range of a unit times the root of its curvature: the
+/// price at which it goes from end to end; its square is the cost of doing so. A
+/// violation times the clamp must be far above that, or the duals stop before
+/// costs are negligible against them, and no proof appears: 3 of 634 problems
+/// impossible by 0.5 MW or more were missed at 2000, all with far larger costs.
+pub fn dual_clamp(reach: f32) -> f32 {
+    let share = reach / REACH;
+    CLAMP * clip(share * share, 1.0, 100.0)
+}
+
+/// Finds how long a step may be where the duals are now.
+///
+/// The safe step is for all rows pulling on all columns at once. Few rows are
+/// active and many columns stand at an end of their range, so the curvature
+/// along the path is several times smaller. It is measured on each step,
+/// remembered for a while, and at most [`STEP_MOST`] safe steps are made of it;
+/// where it rises again the step falls at once and the restart rule takes
+/// what was overdone. Of 1322 random problems, 96.9 % instead of 92.6 % are within
+/// 1e-3 pu after 200 steps, all instead of 98 % after 1000 (`optima`).
+#[derive(Clone, Debug)]
+struct Stride<const R: usize> {
+    v: [f32; R],
+    ax: [f32; R],
+    curvature: f32,
+}
+
+impl<const R: usize> Stride<R> {
+    const fn new() -> Self {
+        Self { v: [0.0; R], ax: [0.0; R], curvature: 0.0 }
+    }
+
+    /// The step from `v`, where the rows stand at `ax`; `safe` is always allowed.
+    fn next(&mut self, v: &[f32; R], ax: &[f32; R], rows: usize, safe: f32) -> f32 {
+        let (mut bend, mut way) = (0.0, 0.0);
+        let before = self.v.iter_mut().zip(&mut self.ax);
+        for ((last_v, last_ax), (&v, &ax)) in before.zip(v.iter().zip(ax)).take(rows) {
+            let moved = v - *last_v;
+            bend -= moved * (ax - *last_ax);
+            way += moved * moved;
+            (*last_v, *last_ax) = (v, ax);
+        }
+        let met = if way > 0.0 { bend / way } else { 0.0 };
+        let most = 1.0 / safe;
+        let wish = max(CURVATURE_KEEP * self.curvature, CURVATURE_MARGIN * met);
+        // Anything that is not a number becomes the safe curvature.
+        self.curvature = clip(wish, most / STEP_MOST, most);
+        1.0 / self.curvature
+    }
 }
 
 /// State of one instance of the iteration.
@@ -43,28 +110,43 @@ const fn momentum() -> [f32; MOMENTUM_LEN] {
 pub struct Iterate<const X: usize, const R: usize> {
     pub(crate) x: [f32; X],
     pub(crate) y: [f32; R],
+    y_rest: [f32; R],
     v: [f32; R],
+    v_rest: [f32; R],
     pub(crate) ax: [f32; R],
-    momentum: usize,
+    stride: Stride<R>,
+    /// Steps of growing momentum; held at the largest number, a momentum of 1 - 5e-5.
+    momentum: u16,
 }
 
 impl<const X: usize, const R: usize> Iterate<X, R> {
     /// Cold start.
     pub const fn new() -> Self {
-        Self { x: [0.0; X], y: [0.0; R], v: [0.0; R], ax: [0.0; R], momentum: 0 }
+        Self {
+            x: [0.0; X],
+            y: [0.0; R],
+            y_rest: [0.0; R],
+            v: [0.0; R],
+            v_rest: [0.0; R],
+            ax: [0.0; R],
+            stride: Stride::new(),
+            momentum: 0,
+        }
     }
 
     /// Forget the duals.
     pub fn reset(&mut self) {
-        self.y = [0.0; R];
-        self.v = [0.0; R];
-        self.momentum = 0;
+        self.set_dual(&[0.0; R]);
     }
 
     /// Go on from these scaled duals, without momentum.
     pub fn set_dual(&mut self, y: &[f32; R]) {
         self.y = *y;
         self.v = *y;
+        self.y_rest = [0.0; R];
+        self.v_rest = [0.0; R];
+        self.stride.v = *y;
+        self.stride.curvature = 0.0;
         self.momentum = 0;
     }
 
@@ -73,9 +155,9 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
         &self.y
     }
 
-    /// Make `count` steps of length `sigma`.
+    /// Make `count` steps; `sigma` is the safe step of this matrix.
     ///
-    /// Cost: `count` times (4 rows x cols + 8 rows + 6 cols) flops.
+    /// Cost: `count` times (4 rows x cols + 50 rows + 6 cols) flops.
     pub fn run(
         &mut self,
         scaled: &Scaled<X, R>,
@@ -105,21 +187,29 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
 
     /// Projected ascent on the duals, with momentum and restart.
     fn ascend(&mut self, scaled: &Scaled<X, R>, limits: &Limits<X, R>, sigma: f32, clamp: f32) {
-        let inverse = 1.0 / sigma;
-        let mut next = [0.0; R];
+        let sigma = self.stride.next(&self.v, &self.ax, scaled.rows, sigma);
+        let mut next = [Fine::ZERO; R];
         let mut turn = 0.0;
-        let rows = self.ax.iter().zip(&limits.row_low).zip(&limits.row_high);
-        let duals = next.iter_mut().zip(&self.v).zip(&self.y);
-        for (((&ax, &low), &high), ((next, &v), &y)) in rows.zip(duals).take(scaled.rows) {
-            let wish = v * inverse + ax;
-            *next = clip(sigma * (wish - clip(wish, low, high)), -clamp, clamp);
-            turn += (v - *next) * (*next - y);
+        let rows = self.ax.iter().zip(limits.row_low.iter().zip(&limits.row_high));
+        let duals = self.v.iter().zip(&self.v_rest).zip(self.y.iter().zip(&self.y_rest));
+        for (((&ax, (&low, &high)), ((&v, &v_rest), (&y, &y_rest))), next) in
+            rows.zip(duals).zip(&mut next).take(scaled.rows)
+        {
+            let (v, y) = (Fine { head: v, rest: v_rest }, Fine { head: y, rest: y_rest });
+            *next = moved(v, sigma * (ax - low), sigma * (ax - high), clamp);
+            turn += v.minus(*next) * next.minus(y);
         }
-        let beta = if turn > 0.0 { 0.0 } else { super::kernel::at(&MOMENTUM, self.momentum) };
-        self.momentum = if turn > 0.0 { 0 } else { (self.momentum + 1).min(MOMENTUM_LEN - 1) };
-        for ((v, y), &next) in self.v.iter_mut().zip(&mut self.y).zip(&next).take(scaled.rows) {
-            *v = next + beta * (next - *y);
-            *y = next;
+        let steps = f32::from(self.momentum);
+        let beta = if turn > 0.0 { 0.0 } else { steps / (steps + 3.0) };
+        let more = self.momentum.saturating_add(1);
+        // Half the momentum comes back at once: the path seldom turns by much.
+        self.momentum = if turn > 0.0 { self.momentum / 2 } else { more };
+        let duals = self.v.iter_mut().zip(&mut self.v_rest);
+        let duals = duals.zip(self.y.iter_mut().zip(&mut self.y_rest));
+        for (((v, v_rest), (y, y_rest)), next) in duals.zip(&next).take(scaled.rows) {
+            let ahead = next.plus(beta * next.minus(Fine { head: *y, rest: *y_rest }));
+            (*v, *v_rest) = (ahead.head, ahead.rest);
+            (*y, *y_rest) = (next.head, next.rest);
         }
     }
 
@@ -140,8 +230,70 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
     }
 }
 
+/// A dual moved by its row: up while the row is above its high limit, down while
+/// below its low one, to zero between; inside the clamp, and a number.
+#[inline(always)]
+fn moved(v: Fine, to_low: f32, to_high: f32, clamp: f32) -> Fine {
+    let (down, up) = (v.plus(to_low), v.plus(to_high));
+    let next = if up.head > 0.0 {
+        up
+    } else if down.head < 0.0 {
+        down
+    } else {
+        Fine::ZERO
+    };
+    let head = clip(next.head, -clamp, clamp);
+    if head == next.head { next } else { Fine { head, rest: 0.0 } }
+}
+
 impl<const X: usize, const R: usize> Default for Iterate<X, R> {
     fn default() -> Self {
         Self::new()
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn small_steps_are_not_lost_on_a_large_dual() {
+        let mut fine = Fine { head: 1000.0, rest: 0.0 };
+        for _ in 0..10_000 {
+            fine = fine.plus(1e-5);
+        }
+        let gained = fine.minus(Fine { head: 1000.0, rest: 0.0 });
+        assert!((gained - 0.1).abs() < 1e-4, "{gained}");
+        // In one part the same steps vanish.
+        assert_eq!(1000.0_f32 + 1e-5, 1000.0);
+    }
+
+    #[test]
+    fn stride_is_long_where_it_is_flat_and_safe_where_it_is_steep() {
+        let mut stride = Stride::<2>::new();
+        let safe = 0.1;
+        assert!((stride.next(&[0.0; 2], &[0.0; 2], 2, safe) - STEP_MOST * safe).abs() < 1e-6);
+        // Curvature 10 along the step is all that the safe step allows for.
+        let short = stride.next(&[1.0, 0.0], &[-10.0, 0.0], 2, safe);
+        assert!((short - safe).abs() < 1e-6, "{short}");
+        let spoilt = stride.next(&[1.0, f32::NAN], &[-10.0, 0.0], 2, safe);
+        assert!(spoilt >= safe && spoilt <= STEP_MOST * safe, "{spoilt}");
+    }
+
+    #[test]
+    fn duals_stay_numbers_inside_the_clamp() {
+        for way in [f32::NAN, f32::INFINITY, f32::NEG_INFINITY, 1e38, -1e38] {
+            for v in [0.0, 5.0, -10.0] {
+                let next = moved(Fine { head: v, rest: 0.0 }, way, way, 10.0);
+                assert!(next.head.abs() <= 10.0 && next.rest.is_finite(), "{way} {v}");
+            }
+        }
+    }
+
+    #[test]
+    fn clamp_is_the_ordinary_one_up_to_the_ordinary_reach() {
+        assert_eq!(dual_clamp(8.0), CLAMP);
+        assert_eq!(dual_clamp(40.0), 4.0 * CLAMP);
+        assert_eq!(dual_clamp(f32::NAN), 100.0 * CLAMP);
     }
 }

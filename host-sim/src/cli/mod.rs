@@ -4,6 +4,11 @@
 //! exit code. Results go to stdout, progress and problems to stderr. Colour is
 //! used only on a terminal, never with `NO_COLOR`, and never alone.
 
+pub mod bench;
+pub mod check;
+pub mod fit;
+pub mod import;
+pub mod new;
 mod progress;
 pub mod rehearse;
 
@@ -12,12 +17,6 @@ use std::io::{IsTerminal, Write};
 use clap::{Parser, Subcommand};
 
 use crate::report::summary::Colour;
-
-pub mod bench;
-pub mod check;
-pub mod fit;
-pub mod import;
-pub mod new;
 
 /// How a command that ran to its end ended.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -63,6 +62,12 @@ pub enum Command {
     Bench(bench::Args),
     /// Show whether each area's steward fits a chip, from images built and run now.
     Fit(fit::Args),
+    /// Read a grid or a play and say what it holds, or what is wrong with it.
+    Check(check::Args),
+    /// Turn an IEEE Common Data Format file into a grid file.
+    Import(import::Args),
+    /// Write a commented grid and play to start from.
+    New(new::Args),
 }
 
 /// Run the command that was given.
@@ -73,6 +78,9 @@ pub fn run(cli: &Cli) -> Result<Ending, Failure> {
         Command::Rehearse(args) => rehearse::run(args),
         Command::Bench(args) => bench::run(args),
         Command::Fit(args) => fit::run(args),
+        Command::Check(args) => check::run(args),
+        Command::Import(args) => import::run(args),
+        Command::New(args) => new::run(args),
     }
 }
 
