@@ -24,6 +24,15 @@ pub struct Effort {
     pub stack_bytes: u32,
     /// Whether the tick rebuilt the problem.
     pub rebuilt: bool,
+    /// Whether a proof was said in it: the rung changes, and the rebuild follows.
+    pub proof: bool,
+}
+
+impl Effort {
+    /// Whether it is a tick like any other.
+    pub fn is_plain(&self) -> bool {
+        !self.rebuilt && !self.proof
+    }
 }
 
 /// Bytes to and from a board in one tick, as on the wire.
@@ -46,6 +55,8 @@ pub struct BoardNotes {
     pub greeting: Greeting,
     /// Effort per tick, if its image measures it.
     pub efforts: Vec<Effort>,
+    /// Ticks in which a proof was said.
+    pub proof_ticks: Vec<u32>,
     /// Bytes per tick.
     pub traffic: Vec<Traffic>,
     /// Frames from it that were none.
@@ -93,6 +104,7 @@ impl Notes {
                 core,
                 greeting,
                 efforts: Vec::new(),
+                proof_ticks: Vec::new(),
                 traffic: Vec::new(),
                 garbled: 0,
                 boots: 1,
@@ -145,10 +157,20 @@ impl Notes {
         }
     }
 
-    /// A board says what a tick cost it.
+    /// A part of a proof comes from a board.
+    pub fn proof(&mut self, area: usize, tick: u32) {
+        if let Some(board) = self.board(area)
+            && board.proof_ticks.last() != Some(&tick)
+        {
+            board.proof_ticks.push(tick);
+        }
+    }
+
+    /// A board says what a tick cost it, after all else of that tick.
     pub fn effort(&mut self, area: usize, effort: Effort) {
         if let Some(board) = self.board(area) {
-            board.efforts.push(effort);
+            let proof = board.proof_ticks.last() == Some(&effort.tick);
+            board.efforts.push(Effort { proof, ..effort });
         }
     }
 

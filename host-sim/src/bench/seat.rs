@@ -134,9 +134,14 @@ impl BoardSeat {
                     instructions: effort.instructions,
                     stack_bytes: effort.stack_bytes,
                     rebuilt: effort.rebuilt,
+                    proof: false,
                 };
                 self.shared.borrow_mut().effort(self.area, effort);
                 Taken::Aside
+            }
+            Message::ProofPart(part) => {
+                self.shared.borrow_mut().proof(self.area, part.tick);
+                Taken::Speech { to: header.to, ends: None }
             }
             Message::Hello(_) | Message::CharterState(_) => Taken::Aside,
             _ => Taken::Speech { to: header.to, ends: None },

@@ -40,7 +40,7 @@ pub struct Args {
     #[arg(long, value_name = "N", default_value = "1.5", value_parser = parse_positive)]
     pub cycles_per_instruction: f64,
     /// Speed of the serial link, bit/s; a byte takes ten.
-    #[arg(long, value_name = "BIT/S", default_value = "115200", value_parser = parse_positive)]
+    #[arg(long, value_name = "BIT/S", default_value = "460800", value_parser = parse_positive)]
     pub baud: f64,
     /// Flash of the chip for which the largest area is asked, KiB.
     #[arg(long, value_name = "KIB", default_value = "512", value_parser = parse_positive)]

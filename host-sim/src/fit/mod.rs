@@ -99,9 +99,9 @@ pub struct AreaFit {
     pub area: String,
     /// What it needs room for.
     pub needs: Capacity,
-    /// Instructions of ticks without a rebuild.
+    /// Instructions of ticks without a rebuild and without a proof.
     pub instructions: Option<Spread>,
-    /// Instructions of ticks with a rebuild.
+    /// Instructions of ticks with one.
     pub rebuild_instructions: Option<Spread>,
     /// Share of a tick that the longest one takes, at the clock stated.
     pub tick_share: Option<f64>,
@@ -287,8 +287,8 @@ fn area_fit(
     stack_room_bytes: u64,
 ) -> AreaFit {
     let counted = || board.efforts.iter().filter(|effort| effort.tick >= WARM_UP_TICKS);
-    let spread = |rebuilt: bool| {
-        let of = counted().filter(|effort| effort.rebuilt == rebuilt);
+    let spread = |plain: bool| {
+        let of = counted().filter(|effort| effort.is_plain() == plain);
         Spread::of(of.map(|effort: &Effort| u64::from(effort.instructions)))
     };
     let most = counted().map(|effort| effort.instructions).max();
@@ -301,8 +301,8 @@ fn area_fit(
     AreaFit {
         area: grid.areas[board.area].name.clone(),
         needs: needs(grid, board.area),
-        instructions: spread(false),
-        rebuild_instructions: spread(true),
+        instructions: spread(true),
+        rebuild_instructions: spread(false),
         tick_share: most.map(|most| {
             f64::from(most) * options.cycles_per_instruction / (mhz * 1e6 * play::TICK_S)
         }),

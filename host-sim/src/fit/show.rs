@@ -34,7 +34,7 @@ pub fn assumptions(fit: &Fit) -> Vec<String> {
             fit.cycles_per_instruction
         ),
         "  emulator counts instructions, not cycles; caches and wait states are not in it), at the core's".to_owned(),
-        format!("  clock, in a tick of {} s. Rebuild: a tick after a change of topology, rung or open ties.", fit.tick_s),
+        format!("  clock, in a tick of {} s. Rebuild: a tick with a new topology, rung or set of open ties, or a proof.", fit.tick_s),
         format!(
             "Share of the link: the busier direction's busiest tick at {:.0} bit/s, ten bits a byte.",
             fit.baud
@@ -85,9 +85,9 @@ fn write_core(out: &mut String, fit: &Fit, core: &CoreFit) {
     if !core.areas.is_empty() {
         let _ = writeln!(
             out,
-            "  {:<14}{:>27}{:>12}{:>8}{:>13}{:>12}{:>8}",
+            "  {:<14}{:>25}{:>12}{:>8}{:>13}{:>13}{:>8}",
             "area",
-            "instructions min/med/max",
+            "insns min/med/max",
             "rebuild max",
             "tick",
             "stack/left",
@@ -121,7 +121,7 @@ fn write_area(out: &mut String, area: &AreaFit) {
     let number = |n: Option<u64>| n.map_or("-".to_owned(), |n| n.to_string());
     let _ = writeln!(
         out,
-        "  {:<14}{:>27}{:>12}{:>8}{:>13}{:>12}{:>8}",
+        "  {:<14}{:>25}{:>12}{:>8}{:>13}{:>13}{:>8}",
         area.area,
         three(area.instructions),
         most(area.rebuild_instructions),
