@@ -71,12 +71,12 @@ impl<const X: usize, const R: usize> Judgement<X, R> {
             pause_ticks: 0,
             gap_trend: 0.0,
             shadow_pause_ticks: 0,
-            proven: -1.0,
+            proven: 0.0,
             error: [0.0; R],
             row_low: [0.0; R],
             row_high: [0.0; R],
             rung: Rung::Keep,
-            proof: Proof { dual: [0.0; R], boxes: Boxes::new(), shortfall: -1.0 },
+            proof: Proof { dual: [0.0; R], boxes: Boxes::new(), shortfall: 0.0 },
         }
     }
 }
