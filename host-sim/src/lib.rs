@@ -10,6 +10,7 @@ pub mod bench;
 pub mod case;
 pub mod charter;
 pub mod cli;
+pub mod divide;
 pub mod fit;
 pub mod grid;
 pub mod judge;

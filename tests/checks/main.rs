@@ -8,6 +8,7 @@ mod boards;
 mod catalogue;
 mod closed39;
 mod codes;
+mod divide;
 mod frequency;
 mod incident;
 mod mutation;

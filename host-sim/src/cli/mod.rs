@@ -6,6 +6,7 @@
 
 pub mod bench;
 pub mod check;
+pub mod divide;
 pub mod fit;
 pub mod import;
 pub mod new;
@@ -66,7 +67,9 @@ pub enum Command {
     Check(check::Args),
     /// Turn an IEEE Common Data Format file into a grid file.
     Import(import::Args),
-    /// Write a commented grid and play to start from.
+    /// Choose the tie lines to leave open so that the areas form a tree.
+    Divide(divide::Args),
+    /// Write a commented grid and play to start from, or a made-up grid.
     New(new::Args),
 }
 
@@ -80,6 +83,7 @@ pub fn run(cli: &Cli) -> Result<Ending, Failure> {
         Command::Fit(args) => fit::run(args),
         Command::Check(args) => check::run(args),
         Command::Import(args) => import::run(args),
+        Command::Divide(args) => divide::run(args),
         Command::New(args) => new::run(args),
     }
 }
