@@ -12,6 +12,7 @@ mod incident;
 mod mutation;
 mod optima;
 mod plays;
+mod sweep;
 mod published;
 mod trajectories;
 mod updates;

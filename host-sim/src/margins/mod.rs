@@ -1,0 +1,1 @@
+//! How far each imperfection can go before a play stops settling.
