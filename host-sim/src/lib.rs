@@ -9,6 +9,7 @@ pub mod baseline;
 pub mod case;
 pub mod charter;
 pub mod cli;
+pub mod divide;
 pub mod grid;
 pub mod judge;
 pub mod link;

@@ -5,10 +5,13 @@
 //! used only on a terminal, never with `NO_COLOR`, and never alone.
 
 pub mod check;
+pub mod divide;
 pub mod import;
+pub mod margins;
 pub mod new;
 mod progress;
 pub mod rehearse;
+pub mod sweep;
 
 use std::io::{IsTerminal, Write};
 
@@ -60,7 +63,13 @@ pub enum Command {
     Check(check::Args),
     /// Turn an IEEE Common Data Format file into a grid file.
     Import(import::Args),
-    /// Write a commented grid and play to start from.
+    /// Choose the tie lines to leave open so that the areas form a tree.
+    Divide(divide::Args),
+    /// Run every credible outage, at several loading levels, under several schemes.
+    Sweep(sweep::Args),
+    /// Find how far each imperfection can go before a play stops settling.
+    Margins(margins::Args),
+    /// Write a commented grid and play to start from, or a made-up grid.
     New(new::Args),
 }
 
@@ -72,6 +81,9 @@ pub fn run(cli: &Cli) -> Result<Ending, Failure> {
         Command::Rehearse(args) => rehearse::run(args),
         Command::Check(args) => check::run(args),
         Command::Import(args) => import::run(args),
+        Command::Divide(args) => divide::run(args),
+        Command::Sweep(args) => sweep::run(args),
+        Command::Margins(args) => margins::run(args),
         Command::New(args) => new::run(args),
     }
 }

@@ -204,7 +204,7 @@ fn dir_name(play: &str) -> String {
     }
 }
 
-fn refused(error: ReportError) -> Failure {
+pub(super) fn refused(error: ReportError) -> Failure {
     match error {
         ReportError::Occupied(_) => Failure::Input(error.to_string()),
         ReportError::Write { .. } | ReportError::Layout { .. } => {
@@ -214,7 +214,7 @@ fn refused(error: ReportError) -> Failure {
 }
 
 /// A flag that Ctrl-C sets.
-fn stop_flag() -> Result<Arc<AtomicBool>, Failure> {
+pub(super) fn stop_flag() -> Result<Arc<AtomicBool>, Failure> {
     let flag = Arc::new(AtomicBool::new(false));
     let seen = Arc::clone(&flag);
     ctrlc::set_handler(move || seen.store(true, Ordering::Relaxed))

@@ -16,9 +16,9 @@ pub mod cascade;
 pub mod closed;
 pub mod equilibrium;
 pub mod files;
-//FORECAST
+pub mod forecast;
 pub mod outage;
-//PAGE
+pub mod page;
 pub mod prepare;
 pub mod quadratic;
 pub mod redispatch;

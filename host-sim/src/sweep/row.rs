@@ -18,7 +18,7 @@ pub const MOVED_MW: f64 = 0.1;
 pub const LOST_MW: f64 = 0.05;
 
 /// Heads of the table, in the order of [`Row::fields`].
-pub const HEADS: [&str; 22] = [
+pub const HEADS: [&str; 23] = [
     "form",
     "rating_factor",
     "scheme",
@@ -41,6 +41,7 @@ pub const HEADS: [&str; 22] = [
     "freq_lowest_hz",
     "time_back_s",
     "proofs",
+    "moved_mw",
 ];
 
 /// Figures of one outage.
@@ -88,6 +89,8 @@ pub struct Row {
     pub time_back_s: Option<f64>,
     /// Proofs announced (closed loop with stewards).
     pub proofs: Option<usize>,
+    /// What all units together leave their base points by (up and down added), in MW.
+    pub moved_mw: f64,
 }
 
 /// To a millionth, and no minus zero.
@@ -138,6 +141,14 @@ impl End<'_> {
             touched[grid.buses[grid.lines[line].to].area] = true;
         }
         touched.into_iter().filter(|t| *t).count()
+    }
+
+    fn moved_mw(&self, outage: Outage) -> f64 {
+        let units = self.grid.units.iter().enumerate();
+        let others = units.filter(|(u, data)| {
+            outage.unit() != Some(*u) && data.status != UnitStatus::Off
+        });
+        rounded(others.map(|(u, data)| (self.output_mw[u] - data.base_mw).abs()).sum())
     }
 
     fn units_off(&self, outage: Outage) -> usize {
@@ -199,6 +210,7 @@ impl End<'_> {
             freq_lowest_hz: None,
             time_back_s: None,
             proofs: None,
+            moved_mw: self.moved_mw(outage),
         }
     }
 }
@@ -268,6 +280,7 @@ impl Row {
             maybe(self.freq_lowest_hz),
             maybe(self.time_back_s),
             self.proofs.map(|p| p.to_string()).unwrap_or_default(),
+            self.moved_mw.to_string(),
         ]
     }
 
@@ -301,6 +314,7 @@ impl Row {
             freq_lowest_hz: maybe(fields[19])?,
             time_back_s: maybe(fields[20])?,
             proofs: if fields[21].is_empty() { None } else { Some(fields[21].parse().ok()?) },
+            moved_mw: fields[22].parse().ok()?,
         })
     }
 }

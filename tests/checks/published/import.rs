@@ -1,4 +1,4 @@
-//! The Common Data Format transcription of the 39-bus system.
+//! The Common Data Format rendering of the 39-bus system.
 
 use hedgerow::case::cdf::import;
 use hedgerow::case::parse_grid;
@@ -42,7 +42,7 @@ fn import_of_the_39_bus_system_gives_the_figures_of_the_table() {
     assert_eq!(grid.base_mva, 100.0);
 }
 
-/// Source: IEEE Trans. PAS-92(6), 1973 (the format), our transcription of the 39-bus system; tolerance none (same network in the file of the two-part split).
+/// Source: IEEE Trans. PAS-92(6), 1973 (the format), our rendering of the 39-bus system; tolerance none (same network in the file of the two-part split).
 #[test]
 fn imported_39_bus_network_is_that_of_the_grid_file() {
     let bytes = std::fs::read(data_path("ieee39.cdf")).unwrap();

@@ -14,13 +14,16 @@
 mod pieces;
 mod problem;
 
-use super::balance::{droop_island, relays};
+use super::balance::droop_island;
 use super::state::State;
 use crate::case::defaults;
 use crate::case::model::StewardSettings;
 use crate::grid::dc::DcError;
 use pieces::{Pieces, Role};
 use problem::{Found, Scope, Setting, Strictness};
+
+/// An island is in balance within this, in MW: rounding.
+const EXACT_MW: f64 = 1e-7;
 
 /// What the stewards come to.
 #[derive(Clone, Debug, PartialEq)]
@@ -122,23 +125,19 @@ fn adopt(state: &mut State, pieces: &Pieces, found: &Found) {
     for &(feeder, shed_mw) in &found.shed_mw {
         state.shed_mw[feeder] = shed_mw;
     }
-    let base: Vec<f64> = grid.units.iter().map(|u| u.base_mw).collect();
+    let setpoint_mw = state.output_mw.clone();
+    let base_mw: Vec<f64> = grid.units.iter().map(|u| u.base_mw).collect();
     for island in 0..state.islands {
-        let governed = (0..grid.buses.len())
-            .any(|b| state.island[b] == Some(island) && pieces.role[b] == Role::Main);
-        if governed {
-            let surplus_mw: f64 = {
-                let injection = state.injection_mw();
-                (0..injection.len())
-                    .filter(|&b| state.island[b] == Some(island))
-                    .map(|b| injection[b])
-                    .sum()
-            };
-            if surplus_mw.abs() > super::cascade::SLACK_MW {
-                relays(state, island, surplus_mw);
-            }
-        } else {
-            droop_island(state, island, &base);
+        let here = |b: usize| state.island[b] == Some(island);
+        let governed =
+            (0..grid.buses.len()).any(|b| here(b) && pieces.role[b] == Role::Main);
+        let injection = state.injection_mw();
+        let surplus_mw: f64 = (0..injection.len()).filter(|&b| here(b)).map(|b| injection[b]).sum();
+        if !governed {
+            droop_island(state, island, &base_mw);
+        } else if surplus_mw.abs() > EXACT_MW {
+            // What the stewards need not or can not balance is the governors'.
+            droop_island(state, island, &setpoint_mw);
         }
     }
 }
