@@ -11,9 +11,9 @@ use hedgerow_firmware::law::{Iterate, Limits, Problem, Scaled};
 use hedgerow_firmware::verdict::{Product, Ranges, Rows, dust, shortfall};
 use serde::Deserialize;
 
-/// Capacity in unknowns; the largest problem has 33.
+/// Capacity in unknowns; the largest problem has 40.
 const X: usize = 64;
-/// Capacity in rows; the largest problem has 93 or fewer.
+/// Capacity in rows; the largest problem has 73.
 const R: usize = 96;
 /// Clamp of the scaled duals, as in a charter.
 const CLAMP: f32 = 2000.0;

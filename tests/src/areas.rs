@@ -334,7 +334,13 @@ fn draw_lines(chance: &mut Chance, n: usize, shape: Shape) -> Vec<Line> {
     }
     let (low, high) = shape.reactance;
     ends.into_iter()
-        .map(|(from, to)| Line { from, to, x: chance.decades(low, high), rating: 0.0, closed: true })
+        .map(|(from, to)| Line {
+            from,
+            to,
+            x: chance.decades(low, high),
+            rating: 0.0,
+            closed: true,
+        })
         .collect()
 }
 
@@ -372,7 +378,10 @@ fn draw_feeders(chance: &mut Chance, loads: &[f64]) -> Vec<(usize, f64)> {
         let other = place + chance.below(n - place);
         buses.swap(place, other);
     }
-    buses[..count].iter().map(|&bus| (bus, chance.between(0.3, 0.9) * loads[bus].max(0.0))).collect()
+    buses[..count]
+        .iter()
+        .map(|&bus| (bus, chance.between(0.3, 0.9) * loads[bus].max(0.0)))
+        .collect()
 }
 
 fn draw_ties(chance: &mut Chance, n: usize) -> Vec<Tie> {

@@ -2,5 +2,8 @@
 
 pub mod areas;
 pub mod board;
+pub mod border;
+pub mod detector;
+pub mod exact;
 pub mod programme;
 pub mod table;

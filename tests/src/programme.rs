@@ -18,6 +18,15 @@ pub enum Kind {
     Other,
 }
 
+/// How limits move with a parameter.
+#[derive(Clone, Debug)]
+pub struct Direction {
+    /// Rate of each lower limit.
+    pub low: Vec<f64>,
+    /// Rate of each upper limit.
+    pub high: Vec<f64>,
+}
+
 /// One problem, physical pu.
 #[derive(Clone, Debug)]
 pub struct Programme {
@@ -135,6 +144,36 @@ impl Programme {
         conic.solve().expect("the least violation always exists")[n]
     }
 
+    /// Farthest `t` at which limits moved by `t` times a direction leave `slack` pu of violation.
+    ///
+    /// At that `t` the least violation is `slack`; without slack the problem is just feasible.
+    pub fn farthest(&self, direction: &Direction, slack: f64) -> Option<f64> {
+        let n = self.cols();
+        let mut conic = Conic::new(n + 1);
+        conic.slope[n] = -1.0;
+        conic.at_most(vec![(n, 1.0)], 1e3);
+        self.add_ranges(&mut conic);
+        for i in 0..self.rows() {
+            let mut terms = sparse(&self.a[i]);
+            let mut below = negative(&terms);
+            terms.push((n, -direction.high[i]));
+            below.push((n, direction.low[i]));
+            conic.at_most(terms, self.r[i] + slack);
+            conic.at_most(below, slack - self.l[i]);
+        }
+        conic.solve().map(|x| x[n])
+    }
+
+    /// The problem with its limits moved.
+    pub fn moved(&self, direction: &Direction, t: f64) -> Self {
+        let mut out = self.clone();
+        for i in 0..self.rows() {
+            out.l[i] += t * direction.low[i];
+            out.r[i] += t * direction.high[i];
+        }
+        out
+    }
+
     fn add_ranges(&self, conic: &mut Conic) {
         for j in 0..self.cols() {
             if self.lo[j] == self.hi[j] {
@@ -191,12 +230,9 @@ impl Conic {
         }
         let rows = CscMatrix::new_from_triplets(rhs.len(), n, i, j, v);
         let all: Vec<usize> = (0..n).collect();
-        let curvature =
-            CscMatrix::new_from_triplets(n, n, all.clone(), all, self.curve.clone());
-        let cones: [SupportedConeT<f64>; 2] = [
-            SupportedConeT::ZeroConeT(self.equal.len()),
-            NonnegativeConeT(self.at_most.len()),
-        ];
+        let curvature = CscMatrix::new_from_triplets(n, n, all.clone(), all, self.curve.clone());
+        let cones: [SupportedConeT<f64>; 2] =
+            [SupportedConeT::ZeroConeT(self.equal.len()), NonnegativeConeT(self.at_most.len())];
         let settings = DefaultSettings {
             verbose: false,
             max_threads: 1,

@@ -4,7 +4,7 @@
 //! ranges and the duals inside the clamp, whatever the numbers were, so nothing
 //! winds up. Warm start: the state is kept from tick to tick.
 
-use super::kernel::{clip, mat_vec, soft, sqrt};
+use super::kernel::{clip, mat_vec, max, soft, sqrt};
 use super::limits::Limits;
 use super::scale::Scaled;
 
@@ -44,6 +44,53 @@ impl Fine {
     }
 }
 
+/// Share of the remembered curvature that is kept from step to step: about 100 steps of memory.
+const CURVATURE_KEEP: f32 = 0.99;
+/// Head-room over the curvature met on the last step, which is a lower bound.
+const CURVATURE_MARGIN: f32 = 1.5;
+/// The step is never longer than this many safe steps.
+const STEP_MOST: f32 = 8.0;
+
+/// Finds how long a step may be where the duals are now.
+///
+/// The safe step is for all rows pulling on all columns at once. Few rows are
+/// active and many columns stand at an end of their range, so the curvature
+/// along the path is several times smaller. It is measured on each step,
+/// remembered for a while, and at most [`STEP_MOST`] safe steps are made of it;
+/// where it rises again the step falls at once and the restart rule takes
+/// what was overdone. Of 1322 random problems, 96.9 % instead of 92.6 % are within
+/// 1e-3 pu after 200 steps, all instead of 98 % after 1000 (`optima`).
+#[derive(Clone, Debug)]
+struct Stride<const R: usize> {
+    v: [f32; R],
+    ax: [f32; R],
+    curvature: f32,
+}
+
+impl<const R: usize> Stride<R> {
+    const fn new() -> Self {
+        Self { v: [0.0; R], ax: [0.0; R], curvature: 0.0 }
+    }
+
+    /// The step from `v`, where the rows stand at `ax`; `safe` is always allowed.
+    fn next(&mut self, v: &[f32; R], ax: &[f32; R], rows: usize, safe: f32) -> f32 {
+        let (mut bend, mut way) = (0.0, 0.0);
+        let before = self.v.iter_mut().zip(&mut self.ax);
+        for ((last_v, last_ax), (&v, &ax)) in before.zip(v.iter().zip(ax)).take(rows) {
+            let moved = v - *last_v;
+            bend -= moved * (ax - *last_ax);
+            way += moved * moved;
+            (*last_v, *last_ax) = (v, ax);
+        }
+        let met = if way > 0.0 { bend / way } else { 0.0 };
+        let most = 1.0 / safe;
+        let wish = max(CURVATURE_KEEP * self.curvature, CURVATURE_MARGIN * met);
+        // Anything that is not a number becomes the safe curvature.
+        self.curvature = clip(wish, most / STEP_MOST, most);
+        1.0 / self.curvature
+    }
+}
+
 /// State of one instance of the iteration.
 #[derive(Clone, Debug)]
 pub struct Iterate<const X: usize, const R: usize> {
@@ -53,6 +100,7 @@ pub struct Iterate<const X: usize, const R: usize> {
     v: [f32; R],
     v_rest: [f32; R],
     pub(crate) ax: [f32; R],
+    stride: Stride<R>,
     momentum: u16,
 }
 
@@ -66,6 +114,7 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
             v: [0.0; R],
             v_rest: [0.0; R],
             ax: [0.0; R],
+            stride: Stride::new(),
             momentum: 0,
         }
     }
@@ -81,6 +130,8 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
         self.v = *y;
         self.y_rest = [0.0; R];
         self.v_rest = [0.0; R];
+        self.stride.v = *y;
+        self.stride.curvature = 0.0;
         self.momentum = 0;
     }
 
@@ -89,9 +140,9 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
         &self.y
     }
 
-    /// Make `count` steps of length `sigma`.
+    /// Make `count` steps; `sigma` is the safe step of this matrix.
     ///
-    /// Cost: `count` times (4 rows x cols + 8 rows + 6 cols) flops.
+    /// Cost: `count` times (4 rows x cols + 50 rows + 6 cols) flops.
     pub fn run(
         &mut self,
         scaled: &Scaled<X, R>,
@@ -121,6 +172,7 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
 
     /// Projected ascent on the duals, with momentum and restart.
     fn ascend(&mut self, scaled: &Scaled<X, R>, limits: &Limits<X, R>, sigma: f32, clamp: f32) {
+        let sigma = self.stride.next(&self.v, &self.ax, scaled.rows, sigma);
         let mut next = [Fine::ZERO; R];
         let mut turn = 0.0;
         let rows = self.ax.iter().zip(limits.row_low.iter().zip(&limits.row_high));
@@ -135,7 +187,8 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
         let steps = f32::from(self.momentum);
         let beta = if turn > 0.0 { 0.0 } else { steps / (steps + 3.0) };
         let more = self.momentum.saturating_add(1).min(MOMENTUM_STEPS);
-        self.momentum = if turn > 0.0 { 0 } else { more };
+        // Half the momentum comes back at once: the path seldom turns by much.
+        self.momentum = if turn > 0.0 { self.momentum / 2 } else { more };
         let duals = self.v.iter_mut().zip(&mut self.v_rest);
         let duals = duals.zip(self.y.iter_mut().zip(&mut self.y_rest));
         for (((v, v_rest), (y, y_rest)), next) in duals.zip(&next).take(scaled.rows) {

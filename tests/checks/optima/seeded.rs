@@ -5,7 +5,7 @@ use hedgerow_tests::board::Board;
 use hedgerow_tests::programme::Programme;
 
 /// Iterations after which the law is looked at.
-const LOOKS: [usize; 3] = [1000, 5000, 20_000];
+const LOOKS: [usize; 4] = [200, 1000, 5000, 20_000];
 /// A problem counts as feasible up to this least violation, pu.
 const FEASIBLE: f64 = 1e-7;
 
@@ -60,7 +60,10 @@ fn percentiles(mut values: Vec<f64>) -> String {
 
 fn table(outcomes: &[Outcome], looks: &[usize]) {
     println!("{} feasible problems; pu, pu, share", outcomes.len());
-    println!("{:>28} {:>8} 50 % 90 % 95 % 98 % 99 % 100 %", "", "");
+    println!(
+        "{:>28} {:>9} {:>9} {:>9} {:>9} {:>9} {:>9}",
+        "", "50 %", "90 %", "95 %", "98 %", "99 %", "all"
+    );
     for (place, look) in looks.iter().enumerate() {
         let column = |pick: fn(&Off) -> f64| {
             percentiles(outcomes.iter().map(|o| pick(&o.offs[place])).collect())
@@ -78,16 +81,17 @@ fn table(outcomes: &[Outcome], looks: &[usize]) {
 #[test]
 fn law_rests_at_the_optimum_of_random_areas() {
     let long = std::env::var_os("HEDGEROW_LONG").is_some();
-    let looks = if long { &LOOKS[..] } else { &LOOKS[..2] };
+    let looks = if long { &LOOKS[..] } else { &LOOKS[..3] };
     let count = if long { 500 } else { 60 };
     let outcomes: Vec<Outcome> = (0..count)
         .flat_map(|seed| (0..4).filter_map(move |rung| judge(seed, rung, looks)))
         .collect();
     table(&outcomes, looks);
-    let near = outcomes.iter().filter(|o| o.offs[0].point <= 1e-3).count();
+    assert!(outcomes.len() > 2 * count as usize, "too few feasible problems: {}", outcomes.len());
+    let near = outcomes.iter().filter(|o| o.offs[1].point <= 1e-3).count();
     assert!(near * 100 >= outcomes.len() * 98, "{near} of {} near", outcomes.len());
     for o in &outcomes {
-        let last = o.offs[1];
+        let last = o.offs[2];
         assert!(last.point <= 1e-3, "seed {} rung {}: {last:?}", o.seed, o.rung);
         assert!(last.violation < 1e-3, "seed {} rung {}: {last:?}", o.seed, o.rung);
         assert!(last.cost < 1e-3, "seed {} rung {}: {last:?}", o.seed, o.rung);
