@@ -7,3 +7,4 @@ mod optimum;
 mod pairs;
 mod sameness;
 mod speed;
+mod trends;

@@ -161,7 +161,7 @@ fn list(json: bool) -> Result<String, Failure> {
 }
 
 /// A play by built-in name or by path.
-fn find(name: &str) -> Result<(Grid, Play), Failure> {
+pub(super) fn find(name: &str) -> Result<(Grid, Play), Failure> {
     if let Some(found) = builtin_play(name) {
         return Ok(found);
     }
@@ -193,7 +193,7 @@ fn target(args: &Args, play: &Play) -> (PathBuf, Existing) {
 }
 
 /// A play's name as the name of a directory.
-fn dir_name(play: &str) -> String {
+pub(super) fn dir_name(play: &str) -> String {
     let safe: String = play
         .chars()
         .map(|c| if c.is_alphanumeric() || "-_.".contains(c) { c } else { '-' })

@@ -3,8 +3,8 @@
 //! Contract: a pair is screened out only if, with every set-point where it is,
 //! the exact DC flows after both outages (outage factors of the two lines on each
 //! other included) are within the ratings, nothing islands, and the base point
-//! still meets what the stewards hold (ties on schedule; mid-angles of ties on a
-//! loop of areas). The base point is then the rest point of every scheme: no unit
+//! still meets what stewards hold, if they are swept (ties on schedule; mid-angles
+//! of ties on a loop of areas). The base point is then the rest point of every scheme: no unit
 //! moves, no load is lost, the cascade has one stage. So nothing that could
 //! matter is left out, and the count says how much was.
 //! Cost: one solve per line, then about one pass over the lines per pair.
@@ -45,8 +45,11 @@ pub const WHY_SAFE: &str = "left out only where the exact DC flows after both ou
 
 /// Screen all pairs of lines in service; `cases` are the factors of one form.
 ///
+/// `stewards` says whether ties and mid-angles have to stay as agreed too: without
+/// stewards in the sweep nobody holds a single tie, and net exchanges do not change.
+///
 /// Errors: a failed solve.
-pub fn pairs(cases: &[&Prepared]) -> Result<Screened, DcError> {
+pub fn pairs(cases: &[&Prepared], stewards: bool) -> Result<Screened, DcError> {
     let Some(first) = cases.first() else {
         return Ok(Screened { pairs: Vec::new(), looked_at: 0 });
     };
@@ -57,7 +60,7 @@ pub fn pairs(cases: &[&Prepared]) -> Result<Screened, DcError> {
     for (place, &a) in lines.iter().enumerate() {
         for &b in &lines[place + 1..] {
             out.looked_at += 1;
-            if cases.iter().any(|case| factors.matters(case, a, b)) {
+            if cases.iter().any(|case| factors.matters(case, a, b, stewards)) {
                 out.pairs.push(Outage::Lines(a, b));
             }
         }
@@ -100,7 +103,7 @@ impl Factors {
     }
 
     /// Whether the pair can do anything at all in a case.
-    fn matters(&self, case: &Prepared, a: usize, b: usize) -> bool {
+    fn matters(&self, case: &Prepared, a: usize, b: usize, stewards: bool) -> bool {
         if self.bridge[a] || self.bridge[b] {
             return true;
         }
@@ -110,8 +113,11 @@ impl Factors {
             l != a && l != b && case.grid.lines[l].closed
                 && after(l).abs() > WITHIN_SHARE * case.grid.lines[l].rating_mw
         });
-        over || self.ties.iter().any(|&l| l == a || l == b || (after(l) - case.schedule_mw[l]).abs() > UNMOVED_MW)
-            || self.mid_angles_move(ta, tb, a, b)
+        let off_schedule = |l: usize| {
+            l == a || l == b || (after(l) - case.schedule_mw[l]).abs() > UNMOVED_MW
+        };
+        over || stewards
+            && (self.ties.iter().any(|&l| off_schedule(l)) || self.mid_angles_move(ta, tb, a, b))
     }
 
     /// Transfers across both lines that stand for their outage: a two by two system.

@@ -46,7 +46,7 @@ impl Setup {
             notes.push("Ratings: the factor times the largest base flow of the line over the forms, at least the factor times 5 % of the largest flow of all; the same for every form.".to_owned());
         }
         let schemes = schemes(args)?;
-        let outages = outages(args, &cases, &mut notes)?;
+        let outages = outages(args, &cases, &schemes, &mut notes)?;
         let mode = match args.closed_loop {
             true => Mode::Closed(ClosedLoop { duration_s: args.seconds, ..ClosedLoop::default() }),
             false => Mode::Static,
@@ -126,15 +126,17 @@ fn schemes(args: &Args) -> Result<Vec<Balancing>, Failure> {
 fn outages(
     args: &Args,
     cases: &[Prepared],
+    schemes: &[Balancing],
     notes: &mut Vec<String>,
 ) -> Result<Vec<(Form, Vec<Outage>)>, Failure> {
     let mut out = Vec::new();
+    let stewards = schemes.contains(&Balancing::Steward);
     for form in [Form::AsItIs, Form::Divided] {
         let of_form: Vec<&Prepared> = cases.iter().filter(|c| c.form == form).collect();
         let Some(first) = of_form.first() else { continue };
         let mut list = match (args.pairs, args.outages) {
             (true, _) => {
-                let screened = pairs(&of_form)
+                let screened = pairs(&of_form, stewards)
                     .map_err(|e| Failure::Input(format!("cannot screen pairs: {e}")))?;
                 notes.push(format!(
                     "Pairs of lines, {}: {} looked at, {} screened out ({WHY_SAFE}).",

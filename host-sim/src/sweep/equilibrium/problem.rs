@@ -187,12 +187,8 @@ impl<'a> Builder<'a> {
     /// Whether the programme looks at a bus.
     fn holds(&self, bus: usize) -> bool {
         let role = self.setting.pieces.role[bus];
-        match self.scope {
-            Scope::Whole => role != Role::Outside,
-            Scope::Area(a) => {
-                role == Role::Main && self.setting.state.case.grid.buses[bus].area == a
-            }
-        }
+        let area = self.setting.state.case.grid.buses[bus].area;
+        role == Role::Main && (self.scope == Scope::Whole || self.scope == Scope::Area(area))
     }
 
     fn variable(&mut self, what: Variable, place: Option<usize>, cost: (f64, f64), range: (f64, f64)) -> usize {
@@ -208,9 +204,7 @@ impl<'a> Builder<'a> {
                 continue;
             }
             let rung = self.setting.rungs[state.case.grid.buses[u.bus].area];
-            let (low, high) = if self.setting.pieces.role[u.bus] == Role::Detached {
-                (state.output_mw[unit], state.output_mw[unit])
-            } else if u.status == UnitStatus::Fixed {
+            let (low, high) = if u.status == UnitStatus::Fixed {
                 (u.base_mw, u.base_mw)
             } else if rung <= 1 {
                 (u.min_mw + u.reserve_down_mw, u.max_mw - u.reserve_up_mw)
@@ -239,8 +233,7 @@ impl<'a> Builder<'a> {
             // What was shed in an earlier stage waits for the operator.
             let least = state.shed_mw[feeder];
             let most = f.load_mw.min(state.load_mw(f.bus)).max(least);
-            let may = rung >= 3 && self.setting.pieces.role[f.bus] == Role::Main;
-            if !may || most <= least {
+            if rung < 3 || most <= least {
                 self.given[f.bus] += self.pu(least);
                 continue;
             }
@@ -274,8 +267,8 @@ impl<'a> Builder<'a> {
     }
 
     fn add_balances(&mut self) {
-        if let Scope::Area(area) = self.scope {
-            self.add_exports(area);
+        self.add_exports();
+        if self.scope != Scope::Whole {
             return self.add_balance(|_| true);
         }
         let state = self.setting.state;
@@ -296,21 +289,24 @@ impl<'a> Builder<'a> {
         self.add_row(row, (-given, -given), BALANCE_PRICE);
     }
 
-    /// Ties of one area as loads at its own ends.
-    fn add_exports(&mut self, area: usize) {
+    /// Ties that are not lines of the programme, as loads at the ends it looks at.
+    ///
+    /// In an area's own view that is every tie; in the whole, one behind which a
+    /// cut-off piece hangs: the steward at this end holds its schedule, and what the
+    /// piece takes beside that is nobody's but the governors'.
+    fn add_exports(&mut self) {
         let state = self.setting.state;
-        for (line, l) in state.case.grid.lines.iter().enumerate() {
-            if !is_tie(&state.case.grid, line) || !state.closed[line] {
+        let grid = &state.case.grid;
+        for (line, l) in grid.lines.iter().enumerate() {
+            let is_line = self.scope == Scope::Whole && self.setting.pieces.live_tie[line];
+            if !is_tie(grid, line) || !state.closed[line] || is_line {
                 continue;
             }
-            let flow = match self.setting.pieces.live_tie[line] {
-                true => state.case.schedule_mw[line],
-                false => state.flow_mw[line],
-            };
-            let flow = self.pu(flow);
-            if self.holds(l.from) && state.case.grid.buses[l.from].area == area {
+            let flow = self.pu(state.case.schedule_mw[line]);
+            if self.holds(l.from) {
                 self.given[l.from] -= flow;
-            } else if self.holds(l.to) {
+            }
+            if self.holds(l.to) {
                 self.given[l.to] += flow;
             }
         }
