@@ -9,6 +9,7 @@ mod closed39;
 mod codes;
 mod frequency;
 mod incident;
+mod margins;
 mod mutation;
 mod optima;
 mod plays;

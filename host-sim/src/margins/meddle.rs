@@ -12,7 +12,8 @@ use hedgerow_protocol::auth::{Key, REHEARSAL_KEY};
 use hedgerow_protocol::cobs;
 use hedgerow_protocol::frame;
 use hedgerow_protocol::limits::{FRAME_MAX, WIRE_MAX};
-use hedgerow_protocol::message::{Measurements, Message, Reading, Readings, pack_readings};
+use hedgerow_protocol::message::packed::pack_readings;
+use hedgerow_protocol::message::{Measurements, Message, Reading, Readings};
 
 /// Errors of an area's meters.
 #[derive(Clone, Copy, Debug, Default, PartialEq)]
