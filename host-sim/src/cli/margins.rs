@@ -1,6 +1,6 @@
 //! `hedgerow margins`: how far each imperfection can go before a play stops settling.
 //!
-//! Contract: without arguments it searches the built-in play `absorb`. Ctrl-C
+//! Contract: without arguments it searches the built-in play `lean`. Ctrl-C
 //! ends the search; what is finished is written. Nothing is overwritten without
 //! `--force` but an earlier result in the default directory.
 
@@ -13,16 +13,16 @@ use clap::ValueEnum;
 use super::progress::Progress;
 use super::rehearse::{find, refused, stop_flag};
 use super::{Ending, Failure, put};
+use crate::margins::MarginsError;
 use crate::margins::figures::{Document, recommended_tick_s, swings, text};
 use crate::margins::knob::Knob;
 use crate::margins::page::page;
 use crate::margins::search::{least_iterations, map, margins};
 use crate::margins::trial::Subject;
-use crate::margins::MarginsError;
 use crate::report::{self, Existing};
 
 /// Play that is searched when none is named.
-const DEFAULT_PLAY: &str = "absorb";
+const DEFAULT_PLAY: &str = "lean";
 
 /// An imperfection.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, ValueEnum)]
@@ -50,8 +50,8 @@ impl From<KnobName> for Knob {
 #[derive(Clone, Debug, clap::Args)]
 #[command(after_help = "\
 Examples:
-  hedgerow margins                                  the built-in play `absorb`
-  hedgerow margins lean --only link-delay,loss --seeds 5
+  hedgerow margins                                  the built-in play `lean`
+  hedgerow margins absorb --only link-delay,loss --seeds 5
   hedgerow margins absorb --map plant-delay,loss    a map over two")]
 pub struct Args {
     /// Name of a built-in play, or path of a *.play.toml file.
@@ -130,10 +130,14 @@ pub fn run(args: &Args) -> Result<Ending, Failure> {
 
 fn check_numbers(args: &Args) -> Result<(), Failure> {
     if !matches!(args.map.len(), 0 | 2) {
-        return Err(Failure::Input("--map needs two imperfections, e.g. --map plant-delay,loss".to_owned()));
+        return Err(Failure::Input(
+            "--map needs two imperfections, e.g. --map plant-delay,loss".to_owned(),
+        ));
     }
     if !(2..=40).contains(&args.map_steps) || !(1..=100).contains(&args.seeds) {
-        return Err(Failure::Input("--map-steps must be from 2 to 40, --seeds from 1 to 100".to_owned()));
+        return Err(Failure::Input(
+            "--map-steps must be from 2 to 40, --seeds from 1 to 100".to_owned(),
+        ));
     }
     Ok(())
 }
@@ -165,6 +169,7 @@ fn document(
         schema: 1,
         grid: subject.grid.name.clone(),
         play: subject.play.name.clone(),
+        areas: subject.grid.areas.iter().map(|a| a.name.clone()).collect(),
         seeds,
         stopped,
         recommended_tick_s: recommended_tick_s(&margins),

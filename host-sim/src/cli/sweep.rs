@@ -289,7 +289,8 @@ mod tests {
             Command::Sweep(args) => args,
             other => panic!("{other:?}"),
         };
-        let again = sweep(&Setup::new(&args).unwrap().plan, 1, Default::default(), &|_| true).unwrap();
+        let again =
+            sweep(&Setup::new(&args).unwrap().plan, 1, Default::default(), &|_| true).unwrap();
         assert_eq!(csv_text(&again.rows).unwrap(), csv_text(std::slice::from_ref(row)).unwrap());
     }
 

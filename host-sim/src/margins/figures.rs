@@ -25,6 +25,8 @@ pub struct Document {
     pub grid: String,
     /// Name of the play.
     pub play: String,
+    /// Names of the areas.
+    pub areas: Vec<String>,
     /// Seeds that every kept value was kept with.
     pub seeds: Vec<u64>,
     /// Whether it was stopped before its end.
@@ -74,7 +76,7 @@ pub fn swings(subject: &Subject) -> Result<(Option<Swing>, Option<Swing>), Margi
     for (found, scheme) in found.iter_mut().zip([Scheme::Steward, Scheme::Droop]) {
         let run = rehearse(&subject.grid, &play, scheme, &mut |_| true)
             .map_err(|why| MarginsError::Run { what: "no imperfection".to_owned(), why })?;
-        *found = swing(&run, event.at_s + 2.0 * play.run.tick_s);
+        *found = swing(&subject.grid, &run, event.at_s + 2.0 * play.run.tick_s);
     }
     let [steward, droop] = found;
     Ok((steward, droop))
@@ -88,7 +90,8 @@ pub fn digits(value: f64) -> String {
 /// The document as text.
 pub fn text(d: &Document) -> String {
     let mut out = format!("{} on {}: {} seeds\n\n", d.play, d.grid, d.seeds.len());
-    let _ = writeln!(out, "{:<16} {:>12} {:>12}  what broke first", "imperfection", "kept", "broken");
+    let _ =
+        writeln!(out, "{:<16} {:>12} {:>12}  what broke first", "imperfection", "kept", "broken");
     for m in &d.margins {
         let broken = m.broken.map_or("-".to_owned(), |b| format!("{} {}", digits(b), m.unit));
         let kept = format!("{} {}", digits(m.kept), m.unit);
@@ -96,17 +99,33 @@ pub fn text(d: &Document) -> String {
         let _ = writeln!(out, "{:<16} {kept:>12} {broken:>12}  {why}", m.knob.word());
     }
     let swing = |s: &Option<Swing>| match s {
-        Some(s) => format!("period {:.2} s, damping ratio {:.3}", s.period_s, s.damping),
+        Some(s) => format!(
+            "{} against {}, period {:.2} s, damping ratio {:.3}",
+            d.areas[s.areas.0], d.areas[s.areas.1], s.period_s, s.damping
+        ),
         None => "no swing stands out".to_owned(),
     };
-    let _ = writeln!(out, "\nSlowest inter-area swing\n  with stewards: {}\n  droop alone:   {}", swing(&d.swing_steward), swing(&d.swing_droop));
+    let _ = writeln!(
+        out,
+        "\nSlowest inter-area swing\n  with stewards: {}\n  droop alone:   {}",
+        swing(&d.swing_steward),
+        swing(&d.swing_droop)
+    );
     if let (Some(tick), Some(least), Some(iterations)) =
         (d.recommended_tick_s, d.least_iterations, d.recommended_iterations)
     {
-        let _ = writeln!(out, "\nRecommended: tick {tick} s, {iterations} iterations (least kept: {least})\n  {RECOMMENDED_HOW}");
+        let _ = writeln!(
+            out,
+            "\nRecommended: tick {tick} s, {iterations} iterations (least kept: {least})\n  {RECOMMENDED_HOW}"
+        );
     }
     if let Some(map) = &d.map {
-        let _ = writeln!(out, "\n{} up, {} across (# kept, . broken)", map.up.word(), map.across.word());
+        let _ = writeln!(
+            out,
+            "\n{} up, {} across (# kept, . broken)",
+            map.up.word(),
+            map.across.word()
+        );
         for (row, value) in map.kept.iter().zip(&map.up_values).rev() {
             let cells: String = row.iter().map(|&k| if k { " #" } else { " ." }).collect();
             let _ = writeln!(out, "{:>9}{cells}", digits(*value));

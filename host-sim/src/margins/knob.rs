@@ -84,7 +84,11 @@ impl Knob {
     /// Unit of its value.
     pub fn unit(self) -> &'static str {
         match self {
-            Knob::LinkDelay | Knob::PlantDelay | Knob::Tick | Knob::ActuatorLag | Knob::MeterScan => "s",
+            Knob::LinkDelay
+            | Knob::PlantDelay
+            | Knob::Tick
+            | Knob::ActuatorLag
+            | Knob::MeterScan => "s",
             Knob::Loss | Knob::ActuatorGain | Knob::Sensitivity | Knob::MeterClass => "%",
             Knob::FrequencyNoise => "mHz",
         }
@@ -144,7 +148,11 @@ impl Knob {
             Knob::ActuatorLag => inputs.grid.units.iter_mut().for_each(|u| u.lag_s += value),
             Knob::ActuatorGain => {
                 let mut signs = Signs::new(seed, "actuators");
-                inputs.grid.units.iter_mut().for_each(|u| u.gain_error = signs.next() * value / 100.0);
+                inputs
+                    .grid
+                    .units
+                    .iter_mut()
+                    .for_each(|u| u.gain_error = signs.next() * value / 100.0);
             }
             Knob::Sensitivity => {
                 let mut signs = Signs::new(seed, "reactances");
@@ -165,7 +173,8 @@ pub struct Signs(ChaCha8Rng);
 impl Signs {
     /// The stream of a seed and a name.
     pub fn new(seed: u64, name: &str) -> Self {
-        let salt = name.bytes().fold(seed, |h, b| h.wrapping_mul(0x0000_0100_0000_01b3) ^ u64::from(b));
+        let salt =
+            name.bytes().fold(seed, |h, b| h.wrapping_mul(0x0000_0100_0000_01b3) ^ u64::from(b));
         Self(ChaCha8Rng::seed_from_u64(salt))
     }
 

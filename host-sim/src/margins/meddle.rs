@@ -5,9 +5,9 @@
 //! steward, its charter format and the loop are those of every other run.
 
 use super::knob::Signs;
+use crate::case::model::{Grid, Play};
 use crate::charter::{Area, compile};
 use crate::rehearsal::{Gone, InProcess, RehearsalError, Seat, SeatCounts, Source, Staff};
-use crate::case::model::{Grid, Play};
 use hedgerow_protocol::auth::{Key, REHEARSAL_KEY};
 use hedgerow_protocol::cobs;
 use hedgerow_protocol::frame;
@@ -43,13 +43,23 @@ impl Meddled {
     /// Charters from `chartered`, meters as given.
     ///
     /// Errors: a grid without charters.
-    pub fn new(chartered: &Grid, play: &Play, meter: Meter, seed: u64) -> Result<Self, RehearsalError> {
+    pub fn new(
+        chartered: &Grid,
+        play: &Play,
+        meter: Meter,
+        seed: u64,
+    ) -> Result<Self, RehearsalError> {
         Ok(Self { areas: compile(chartered, play)?, meter, seed })
     }
 }
 
 impl Staff for Meddled {
-    fn seat(&mut self, area: &Area, name: &str, boot: u32) -> Result<Box<dyn Seat>, RehearsalError> {
+    fn seat(
+        &mut self,
+        area: &Area,
+        name: &str,
+        boot: u32,
+    ) -> Result<Box<dyn Seat>, RehearsalError> {
         let chartered = self.areas.get(area.index).unwrap_or(area);
         let inner = InProcess.seat(chartered, name, boot)?;
         if self.meter.is_exact() {
@@ -116,8 +126,14 @@ impl MeddledSeat {
         let due = self.meter.scan_ticks < 2 || self.ticks.is_multiple_of(self.meter.scan_ticks);
         self.ticks = self.ticks.wrapping_add(1);
         let now = || {
-            let lists =
-                [m.freq_dev_hz, m.line_flow_mw, m.tie_flow_mw, m.output_mw, m.shed_mw, m.feeder_load_mw];
+            let lists = [
+                m.freq_dev_hz,
+                m.line_flow_mw,
+                m.tie_flow_mw,
+                m.output_mw,
+                m.shed_mw,
+                m.feeder_load_mw,
+            ];
             Lists(lists.map(|l| l.iter().collect()))
         };
         let scanned = match self.scanned.take() {

@@ -31,7 +31,9 @@ pub enum MarginsError {
         why: RehearsalError,
     },
     /// The play does not settle to begin with.
-    #[error("the play does not settle even without imperfections ({0}): give it more time, or choose another")]
+    #[error(
+        "the play does not settle even without imperfections ({0}): give it more time, or choose another"
+    )]
     Unsettled(String),
     /// Threads could not be started.
     #[error("cannot start threads: {0}")]

@@ -87,7 +87,11 @@ fn bars(d: &Document, play: &Play) -> String {
         let label = format!("{} {} of {} {}", digits(m.kept), m.unit, digits(most), m.unit);
         drawing.text((172.0 + BAR, y + 14.0), Anchor::Start, 12.0, SLATE, &label);
     }
-    drawing.finish(880.0, 20.0 + 30.0 * d.margins.len() as f64, "margins as shares of the ranges tried")
+    drawing.finish(
+        880.0,
+        20.0 + 30.0 * d.margins.len() as f64,
+        "margins as shares of the ranges tried",
+    )
 }
 
 /// A field of cells: filled and a dot where kept, a cross where broken.
@@ -110,13 +114,22 @@ fn map_svg(map: &Map) -> String {
         drawing.text((x, height + 40.0), Anchor::Middle, 12.0, SLATE, &digits(*value));
     }
     let label = |k: super::knob::Knob| format!("{}, {}", k.word(), k.unit());
-    drawing.text((120.0, height + 62.0), Anchor::Start, 13.0, INK, &format!("across: {}; up: {}; + kept, x broken", label(map.across), label(map.up)));
+    drawing.text(
+        (120.0, height + 62.0),
+        Anchor::Start,
+        13.0,
+        INK,
+        &format!("across: {}; up: {}; + kept, x broken", label(map.across), label(map.up)),
+    );
     drawing.finish(880.0, height + 76.0, "map over two imperfections")
 }
 
 fn more(d: &Document) -> Markup {
     let swing = |s: &Option<Swing>| match s {
-        Some(s) => format!("period {:.2} s, damping ratio {:.3}", s.period_s, s.damping),
+        Some(s) => format!(
+            "{} against {}, period {:.2} s, damping ratio {:.3}",
+            d.areas[s.areas.0], d.areas[s.areas.1], s.period_s, s.damping
+        ),
         None => "no swing stands out".to_owned(),
     };
     html! {

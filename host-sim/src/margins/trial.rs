@@ -49,7 +49,8 @@ impl Subject {
         let mut subject = Self { grid, play, nominal: End::default() };
         let seed = subject.play.run.seed;
         let run = subject.run(&[], seed)?;
-        subject.nominal = End { rung: run.end.rung.clone(), shed_mw: run.end.feeder_shed_mw.iter().sum() };
+        subject.nominal =
+            End { rung: run.end.rung.clone(), shed_mw: run.end.feeder_shed_mw.iter().sum() };
         match subject.judge(&run, &[]) {
             Ok(()) => Ok(subject),
             Err(why) => Err(MarginsError::Unsettled(why)),
@@ -81,7 +82,8 @@ impl Subject {
         let words: Vec<String> =
             knobs.iter().map(|(k, v)| format!("{} {v} {}", k.word(), k.unit())).collect();
         let failed = |why| MarginsError::Run { what: words.join(", "), why };
-        let staff = Meddled::new(&inputs.chartered, &inputs.play, inputs.meter, seed).map_err(failed)?;
+        let staff =
+            Meddled::new(&inputs.chartered, &inputs.play, inputs.meter, seed).map_err(failed)?;
         let attended = attend(&inputs.grid, &inputs.play, Box::new(staff), &mut |_| true);
         Ok(attended.map_err(|why| MarginsError::Run { what: words.join(", "), why })?.recording)
     }
@@ -122,7 +124,9 @@ impl Subject {
         let from = samples - ((samples as f64 * TAIL_SHARE).ceil() as usize).min(samples);
         for (area, freq) in run.series.area_freq_dev_hz.iter().enumerate() {
             let tail = freq.get(from..).unwrap_or_default();
-            let worst = tail.iter().fold(0.0_f64, |m, f| if f.is_finite() { m.max(f.abs()) } else { f64::INFINITY });
+            let worst = tail
+                .iter()
+                .fold(0.0_f64, |m, f| if f.is_finite() { m.max(f.abs()) } else { f64::INFINITY });
             if worst > REST_HZ {
                 return Err(format!(
                     "frequency of {} still {:.1} mHz off",

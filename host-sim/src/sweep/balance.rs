@@ -104,8 +104,9 @@ pub fn relays(state: &mut State, island: usize, surplus_mw: f64) {
         }
     } else if surplus_mw < 0.0 {
         let served = state.served_mw();
-        let buses: Vec<usize> =
-            (0..served.len()).filter(|&b| state.island[b] == Some(island) && served[b] > 0.0).collect();
+        let buses: Vec<usize> = (0..served.len())
+            .filter(|&b| state.island[b] == Some(island) && served[b] > 0.0)
+            .collect();
         let total: f64 = buses.iter().map(|&b| served[b]).sum();
         if total > 0.0 {
             let share = -surplus_mw / total;
@@ -130,17 +131,20 @@ pub fn area_control_setpoints_mw(state: &State) -> Vec<f64> {
     for island in 0..state.islands {
         let units = live_units(state, island);
         for area in 0..grid.areas.len() {
-            let here = |bus: usize| state.island[bus] == Some(island) && grid.buses[bus].area == area;
+            let here =
+                |bus: usize| state.island[bus] == Some(island) && grid.buses[bus].area == area;
             let load_mw: f64 = (0..served.len()).filter(|&b| here(b)).map(|b| served[b]).sum();
             let export_mw: f64 = (0..grid.lines.len())
                 .filter(|&l| still_joins(state, l))
                 .map(|l| {
                     let l_data = &grid.lines[l];
-                    let out = f64::from(u8::from(here(l_data.from))) - f64::from(u8::from(here(l_data.to)));
+                    let out = f64::from(u8::from(here(l_data.from)))
+                        - f64::from(u8::from(here(l_data.to)));
                     out * state.case.schedule_mw[l]
                 })
                 .sum();
-            let own: Vec<usize> = units.iter().copied().filter(|&u| here(grid.units[u].bus)).collect();
+            let own: Vec<usize> =
+                units.iter().copied().filter(|&u| here(grid.units[u].bus)).collect();
             let given: f64 = own.iter().map(|&u| setpoint[u]).sum();
             share(grid.units.as_slice(), &own, load_mw + export_mw - given, &mut setpoint);
         }
@@ -153,7 +157,9 @@ pub fn area_control_setpoints_mw(state: &State) -> Vec<f64> {
 fn still_joins(state: &State, line: usize) -> bool {
     let grid = &state.case.grid;
     let l = &grid.lines[line];
-    is_tie(grid, line) && state.island[l.from].is_some() && state.island[l.from] == state.island[l.to]
+    is_tie(grid, line)
+        && state.island[l.from].is_some()
+        && state.island[l.from] == state.island[l.to]
 }
 
 /// Divide a request among units by ramp, inside their normal ranges.
@@ -174,7 +180,11 @@ fn share(units: &[Unit], own: &[usize], request_mw: f64, setpoint: &mut [f64]) {
         let mut next = Vec::new();
         for &u in &free {
             let wanted = setpoint[u] + before * weight(u) / total;
-            let end = if before > 0.0 { units[u].max_mw.max(setpoint[u]) } else { units[u].min_mw.min(setpoint[u]) };
+            let end = if before > 0.0 {
+                units[u].max_mw.max(setpoint[u])
+            } else {
+                units[u].min_mw.min(setpoint[u])
+            };
             let within = if before > 0.0 { wanted.min(end) } else { wanted.max(end) };
             left -= within - setpoint[u];
             setpoint[u] = within;

@@ -76,7 +76,10 @@ impl Partial {
     /// Errors: what the file system says.
     pub fn append(&mut self, task: usize, rows: &[Row]) -> Result<(), SweepError> {
         let text = task_text(task, rows)?;
-        self.file.write_all(text.as_bytes()).and_then(|()| self.file.flush()).map_err(failed(&self.path))
+        self.file
+            .write_all(text.as_bytes())
+            .and_then(|()| self.file.flush())
+            .map_err(failed(&self.path))
     }
 }
 
@@ -168,7 +171,8 @@ impl Document {
     ///
     /// Errors: what the library says.
     pub fn json(&self) -> Result<String, SweepError> {
-        let mut text = serde_json::to_string_pretty(self).map_err(|e| SweepError::Files(e.to_string()))?;
+        let mut text =
+            serde_json::to_string_pretty(self).map_err(|e| SweepError::Files(e.to_string()))?;
         text.push('\n');
         Ok(text)
     }

@@ -131,22 +131,46 @@ fn panel(d: &Document, factor: Option<f64>) -> String {
     drawing.text((x0, 20.0), Anchor::Start, 14.0, INK, &factor_word(factor));
     for share in [0.0, 0.25, 0.5, 0.75, 1.0] {
         drawing.line((x0, y(share)), (x0 + PLOT.0, y(share)), HAIR, 1.0, "");
-        drawing.text((x0 - 6.0, y(share) + 4.0), Anchor::End, 12.0, SLATE, &format!("{:.0} %", 100.0 * share));
+        drawing.text(
+            (x0 - 6.0, y(share) + 4.0),
+            Anchor::End,
+            12.0,
+            SLATE,
+            &format!("{:.0} %", 100.0 * share),
+        );
     }
     let marks = ticks(0.0, most, 6);
     let digits = decimals(&marks);
     for mark in marks {
         drawing.line((x(mark), y0), (x(mark), y0 + PLOT.1), HAIR, 1.0, "");
-        drawing.text((x(mark), y0 + PLOT.1 + 18.0), Anchor::Middle, 12.0, SLATE, &format!("{mark:.digits$} %"));
+        drawing.text(
+            (x(mark), y0 + PLOT.1 + 18.0),
+            Anchor::Middle,
+            12.0,
+            SLATE,
+            &format!("{mark:.digits$} %"),
+        );
     }
-    drawing.text((x0 + PLOT.0 / 2.0, y0 + PLOT.1 + 36.0), Anchor::Middle, 12.0, SLATE, "load lost, share of demand");
+    drawing.text(
+        (x0 + PLOT.0 / 2.0, y0 + PLOT.1 + 36.0),
+        Anchor::Middle,
+        12.0,
+        SLATE,
+        "load lost, share of demand",
+    );
     for (place, group) in groups.iter().enumerate() {
         drawing.curve(&exceedance(group, &x, &y), colour(place), 2.0, dash(place));
         let at = y0 + 14.0 + 20.0 * place as f64;
         let left = x0 + PLOT.0 + 16.0;
         drawing.line((left, at - 4.0), (left + 34.0, at - 4.0), colour(place), 2.0, dash(place));
         if let Some(r) = group.first() {
-            drawing.text((left + 40.0, at), Anchor::Start, 12.0, INK, &format!("{}, {}", r.scheme.word(), r.form.word()));
+            drawing.text(
+                (left + 40.0, at),
+                Anchor::Start,
+                12.0,
+                INK,
+                &format!("{}, {}", r.scheme.word(), r.form.word()),
+            );
         }
     }
     let height = (y0 + PLOT.1 + 48.0).max(y0 + 30.0 + 20.0 * groups.len() as f64);
@@ -155,7 +179,8 @@ fn panel(d: &Document, factor: Option<f64>) -> String {
 
 /// Steps of the share of outages that lose at least so much.
 fn exceedance(group: &[Row], x: &dyn Fn(f64) -> f64, y: &dyn Fn(f64) -> f64) -> Vec<(f64, f64)> {
-    let mut lost: Vec<f64> = group.iter().filter(|r| r.has_lost()).map(Row::load_lost_percent).collect();
+    let mut lost: Vec<f64> =
+        group.iter().filter(|r| r.has_lost()).map(Row::load_lost_percent).collect();
     lost.sort_by(f64::total_cmp);
     let count = group.len().max(1) as f64;
     let mut left = lost.len() as f64;

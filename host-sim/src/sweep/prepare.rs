@@ -155,7 +155,8 @@ fn spread_imbalance(grid: &Grid, island: &[usize], injection: &mut [f64]) {
 fn meshed_ties(grid: &Grid) -> Vec<bool> {
     let ends: Vec<(usize, usize)> =
         grid.lines.iter().map(|l| (grid.buses[l.from].area, grid.buses[l.to].area)).collect();
-    let closed: Vec<bool> = (0..ends.len()).map(|l| is_tie(grid, l) && grid.lines[l].closed).collect();
+    let closed: Vec<bool> =
+        (0..ends.len()).map(|l| is_tie(grid, l) && grid.lines[l].closed).collect();
     let found = blocks(grid.areas.len(), &ends, &closed);
     (0..ends.len()).map(|l| closed[l] && !found.is_bridge[l]).collect()
 }

@@ -48,7 +48,9 @@ pub fn redispatch(state: &mut State, minutes: f64) -> Result<(), DcError> {
         units.push(unit);
     }
     for island in 0..state.islands {
-        let row = units.iter().map(|&u| f64::from(u8::from(state.island[grid.units[u].bus] == Some(island))));
+        let row = units
+            .iter()
+            .map(|&u| f64::from(u8::from(state.island[grid.units[u].bus] == Some(island))));
         program.add_row(row.collect(), 0.0, 0.0);
     }
     let mut added = vec![false; grid.lines.len()];

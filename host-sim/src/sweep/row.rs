@@ -117,9 +117,8 @@ impl End<'_> {
     }
 
     fn units_moved_percent(&self, outage: Outage) -> f64 {
-        let own = |u: &usize| {
-            self.grid.units[*u].status != UnitStatus::Off && outage.unit() != Some(*u)
-        };
+        let own =
+            |u: &usize| self.grid.units[*u].status != UnitStatus::Off && outage.unit() != Some(*u);
         let all = (0..self.output_mw.len()).filter(own).count();
         let moved = (0..self.output_mw.len()).filter(own).filter(|&u| self.moved(u)).count();
         rounded(if all == 0 { 0.0 } else { 100.0 * moved as f64 / all as f64 })
@@ -129,9 +128,8 @@ impl End<'_> {
         let grid = self.grid;
         let mut touched = vec![false; grid.areas.len()];
         for (unit, u) in grid.units.iter().enumerate() {
-            touched[grid.buses[u.bus].area] |= outage.unit() != Some(unit)
-                && u.status != UnitStatus::Off
-                && self.moved(unit);
+            touched[grid.buses[u.bus].area] |=
+                outage.unit() != Some(unit) && u.status != UnitStatus::Off && self.moved(unit);
         }
         for (bus, lost) in self.lost_mw.iter().enumerate() {
             touched[grid.buses[bus].area] |= *lost > LOST_MW;
@@ -145,9 +143,8 @@ impl End<'_> {
 
     fn moved_mw(&self, outage: Outage) -> f64 {
         let units = self.grid.units.iter().enumerate();
-        let others = units.filter(|(u, data)| {
-            outage.unit() != Some(*u) && data.status != UnitStatus::Off
-        });
+        let others =
+            units.filter(|(u, data)| outage.unit() != Some(*u) && data.status != UnitStatus::Off);
         rounded(others.map(|(u, data)| (self.output_mw[u] - data.base_mw).abs()).sum())
     }
 
@@ -181,7 +178,13 @@ impl End<'_> {
     }
 
     /// The figures that both kinds of run have.
-    pub(super) fn row(&self, form: Form, factor: Option<f64>, scheme: Balancing, outage: Outage) -> Row {
+    pub(super) fn row(
+        &self,
+        form: Form,
+        factor: Option<f64>,
+        scheme: Balancing,
+        outage: Outage,
+    ) -> Row {
         let demand: f64 = self.grid.buses.iter().map(|b| b.load_mw.max(0.0)).sum();
         Row {
             form,
@@ -239,7 +242,9 @@ impl Row {
             stages: ended.stages.len(),
             rung: ended.rung.iter().copied().max().unwrap_or(0),
             beyond: ended.beyond,
-            freq_rest_dev_mhz: rounded(1e3 * freq.fold(0.0, |m, f| if f.abs() > f64::abs(m) { f } else { m })),
+            freq_rest_dev_mhz: rounded(
+                1e3 * freq.fold(0.0, |m, f| if f.abs() > f64::abs(m) { f } else { m }),
+            ),
             ..end.row(case.form, case.factor, scheme, outage)
         }
     }

@@ -79,10 +79,8 @@ impl Plan {
         for (form, outages) in &self.outages {
             let cases: Vec<usize> =
                 (0..self.cases.len()).filter(|&c| self.cases[c].form == *form).collect();
-            let cells: Vec<(usize, usize)> = cases
-                .iter()
-                .flat_map(|&c| (0..self.schemes.len()).map(move |s| (c, s)))
-                .collect();
+            let cells: Vec<(usize, usize)> =
+                cases.iter().flat_map(|&c| (0..self.schemes.len()).map(move |s| (c, s))).collect();
             for &outage in outages {
                 match self.mode {
                     Mode::Static => tasks.push(Task { outage, cells: cells.clone() }),
@@ -188,8 +186,7 @@ pub fn sweep(
         Some(Ok((task, rows)))
     };
     // Small pieces: outages differ a thousandfold in work.
-    let results: Vec<_> =
-        pool.install(|| left.par_iter().with_max_len(1).map(run_one).collect());
+    let results: Vec<_> = pool.install(|| left.par_iter().with_max_len(1).map(run_one).collect());
     for result in results.into_iter().flatten() {
         let (task, rows) = result?;
         done.insert(task, rows);

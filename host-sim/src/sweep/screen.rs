@@ -108,14 +108,16 @@ impl Factors {
             return true;
         }
         let Some((ta, tb)) = self.transfers(case, a, b) else { return true };
-        let after = |l: usize| case.base_flow_mw[l] + self.transfer[a][l] * ta + self.transfer[b][l] * tb;
+        let after =
+            |l: usize| case.base_flow_mw[l] + self.transfer[a][l] * ta + self.transfer[b][l] * tb;
         let over = (0..case.grid.lines.len()).any(|l| {
-            l != a && l != b && case.grid.lines[l].closed
+            l != a
+                && l != b
+                && case.grid.lines[l].closed
                 && after(l).abs() > WITHIN_SHARE * case.grid.lines[l].rating_mw
         });
-        let off_schedule = |l: usize| {
-            l == a || l == b || (after(l) - case.schedule_mw[l]).abs() > UNMOVED_MW
-        };
+        let off_schedule =
+            |l: usize| l == a || l == b || (after(l) - case.schedule_mw[l]).abs() > UNMOVED_MW;
         over || stewards
             && (self.ties.iter().any(|&l| off_schedule(l)) || self.mid_angles_move(ta, tb, a, b))
     }

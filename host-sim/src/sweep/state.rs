@@ -41,7 +41,8 @@ impl Network {
             return Ok(Rc::clone(row));
         }
         let l = &grid.lines[line];
-        let row = Rc::new(self.row(&[(l.from, 1.0), (l.to, -1.0)], self.base_mva / l.reactance_pu)?);
+        let row =
+            Rc::new(self.row(&[(l.from, 1.0), (l.to, -1.0)], self.base_mva / l.reactance_pu)?);
         self.flow_rows.borrow_mut().insert(line, Rc::clone(&row));
         Ok(row)
     }
@@ -185,8 +186,12 @@ impl<'a> State<'a> {
 
     /// Injection of each bus in MW; 0 where black.
     pub fn injection_mw(&self) -> Vec<f64> {
-        let mut injection: Vec<f64> =
-            self.served_mw().iter().zip(&self.relief_mw).map(|(load, relief)| relief - load).collect();
+        let mut injection: Vec<f64> = self
+            .served_mw()
+            .iter()
+            .zip(&self.relief_mw)
+            .map(|(load, relief)| relief - load)
+            .collect();
         for (unit, u) in self.case.grid.units.iter().enumerate() {
             if self.unit_in[unit] {
                 injection[u.bus] += self.output_mw[unit];

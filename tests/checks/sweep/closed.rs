@@ -29,7 +29,9 @@ fn cuts_an_area(grid: &Grid, outage: Outage) -> bool {
     let area = |bus: usize| grid.buses[bus].area;
     let inside: Vec<bool> = (0..ends.len())
         .map(|l| {
-            grid.lines[l].closed && !outage.lines().contains(&l) && area(ends[l].0) == area(ends[l].1)
+            grid.lines[l].closed
+                && !outage.lines().contains(&l)
+                && area(ends[l].0) == area(ends[l].1)
         })
         .collect();
     components(grid.buses.len(), &ends, &inside).1 > grid.areas.len()
@@ -52,20 +54,30 @@ fn the_closed_loop_ends_where_the_static_equilibrium_is() {
         let play = play(&case, outage, &setting);
         let run = rehearse(&case.grid, &play, Scheme::Steward, &mut |_| true).unwrap();
         let end = &run.end;
-        let off = |a: &[f64], b: &[f64]| {
-            a.iter().zip(b).map(|(x, y)| (x - y).abs()).fold(0.0, f64::max)
-        };
+        let off =
+            |a: &[f64], b: &[f64]| a.iter().zip(b).map(|(x, y)| (x - y).abs()).fold(0.0, f64::max);
         let worst = off(&end.unit_output_mw, &ended.state.output_mw)
             .max(off(&end.line_flow_mw, &ended.state.flow_mw))
             .max(off(&end.feeder_shed_mw, &ended.state.shed_mw));
         compared += 1;
-        println!("{}: {worst:.3} MW, rungs {:?} and {:?}", outage.name(&case.grid), end.rung, ended.rung);
+        println!(
+            "{}: {worst:.3} MW, rungs {:?} and {:?}",
+            outage.name(&case.grid),
+            end.rung,
+            ended.rung
+        );
         if worst > 0.5 && ended.rung.iter().all(|r| *r == 0) {
             far.push((outage.name(&case.grid), worst));
         } else if worst > 0.5 {
             // Flat cost while neighbours help: apart, and neither end is wrong.
             let said = judge(&case.grid, &play, &run);
-            assert_eq!(said.outcome, Outcome::Kept, "{}: {:?}", outage.name(&case.grid), said.broken_by);
+            assert_eq!(
+                said.outcome,
+                Outcome::Kept,
+                "{}: {:?}",
+                outage.name(&case.grid),
+                said.broken_by
+            );
         }
     }
     assert!(compared >= 6, "{compared}");
@@ -85,7 +97,8 @@ fn one_outage_rehearsed_alone_gives_the_rows_bytes() {
         mode: Mode::Closed(setting),
     };
     let swept = sweep(&plan, 2, BTreeMap::new(), &|_| true).unwrap();
-    let alone = rehearse(&case.grid, &play(&case, outages[1], &setting), Scheme::Steward, &mut |_| true);
+    let alone =
+        rehearse(&case.grid, &play(&case, outages[1], &setting), Scheme::Steward, &mut |_| true);
     let replayed = row(&case, outages[1], Balancing::Steward, &alone.unwrap());
     assert_eq!(csv_text(&[replayed]).unwrap(), csv_text(&swept.rows[1..2]).unwrap());
 }
@@ -95,8 +108,7 @@ fn one_outage_rehearsed_alone_gives_the_rows_bytes() {
 #[test]
 fn a_closed_loop_sweep_of_39_buses_takes_seconds_and_stays_inside_the_area() {
     let grid = data_grid("39bus_closed_loop.grid.toml");
-    let division =
-        hedgerow::divide::divide(&grid, &Default::default(), &mut |_| true).unwrap();
+    let division = hedgerow::divide::divide(&grid, &Default::default(), &mut |_| true).unwrap();
     let tree = divided(&grid, &division.choices.best[0].opened);
     let cases = prepare(&[(Form::Divided, tree)], &[]).unwrap();
     let outages = vec![(Form::Divided, outage::lines(&cases[0].grid))];
@@ -113,7 +125,9 @@ fn a_closed_loop_sweep_of_39_buses_takes_seconds_and_stays_inside_the_area() {
     for (r, outage) in swept.rows.iter().zip(&plan.outages[0].1) {
         // Within 0.1 mHz: what droop still moves then is below the tolerance.
         let counts = r.rung == 0 && r.freq_rest_dev_mhz.abs() < 0.1;
-        if let (true, false, Some(outside)) = (counts, cuts_an_area(&case.grid, *outage), r.outside_flow_change_mw) {
+        if let (true, false, Some(outside)) =
+            (counts, cuts_an_area(&case.grid, *outage), r.outside_flow_change_mw)
+        {
             at_rest += 1;
             assert!(outside < 0.5, "{}: {outside} MW", r.outage);
         }
@@ -147,11 +161,20 @@ fn the_judge_finds_nothing_to_say_against_the_static_equilibrium() {
             run.end.rung.clone_from(&ended.rung);
             run.proofs.clear();
             let said = judge(&case.grid, &play, &run);
-            assert_eq!(said.outcome, Outcome::Kept, "{}: {:?}", outage.name(&case.grid), said.broken_by);
+            assert_eq!(
+                said.outcome,
+                Outcome::Kept,
+                "{}: {:?}",
+                outage.name(&case.grid),
+                said.broken_by
+            );
             judged += 1;
             rungs[usize::from(ended.rung.iter().copied().max().unwrap())] += 1;
         }
     }
     println!("{judged} static ends judged, by deepest rung {rungs:?}");
-    assert!(judged > 60 && rungs[0] > 10 && rungs[1] + rungs[2] + rungs[3] > 5, "{judged} {rungs:?}");
+    assert!(
+        judged > 60 && rungs[0] > 10 && rungs[1] + rungs[2] + rungs[3] > 5,
+        "{judged} {rungs:?}"
+    );
 }

@@ -134,7 +134,9 @@ fn six_buses_fall_in_the_three_stages_worked_by_hand() {
         assert!((flow(stage, name) - hand_mw).abs() < 1e-9, "{stage} {name} {}", flow(stage, name));
     }
     assert!((ended.state.load_lost_mw() - 140.0).abs() < 1e-9);
-    assert!(ended.state.output_mw[0].abs() < 1e-9 && (ended.state.output_mw[1] - 60.0).abs() < 1e-9);
+    assert!(
+        ended.state.output_mw[0].abs() < 1e-9 && (ended.state.output_mw[1] - 60.0).abs() < 1e-9
+    );
 }
 
 /// The stewards bring the 85 MW path to its rating: G1 at 170 MW, G5 at 30.

@@ -52,9 +52,8 @@ fn the_static_equilibrium_is_that_of_an_interior_point_solver() {
             continue;
         };
         let ours = ours.unwrap_or_else(|| panic!("seed {seed}: the reference has a solution"));
-        let distance = |x: &[f64]| {
-            x.iter().zip(&reference).map(|(a, b)| (a - b).abs()).fold(0.0, f64::max)
-        };
+        let distance =
+            |x: &[f64]| x.iter().zip(&reference).map(|(a, b)| (a - b).abs()).fold(0.0, f64::max);
         worst = worst.max(distance(&ours));
         if compared % 10 == 0 {
             let mut board = Board::new(&problem);
@@ -63,7 +62,9 @@ fn the_static_equilibrium_is_that_of_an_interior_point_solver() {
         }
         compared += 1;
     }
-    println!("{compared} problems, {contradictions} contradictory: f64 {worst:.2e}, f32 {worst_f32:.2e} pu");
+    println!(
+        "{compared} problems, {contradictions} contradictory: f64 {worst:.2e}, f32 {worst_f32:.2e} pu"
+    );
     assert!(worst < 1e-6, "{worst:e}");
     assert!(worst_f32 < 1e-3, "{worst_f32:e}");
 }

@@ -48,7 +48,9 @@ fn a_pair_that_was_screened_out_moves_nothing_under_any_scheme() {
         }
         println!(
             "{}: {} pairs, {} screened out; {left_out} of those run here, {silent} can matter",
-            case.grid.name, screened.looked_at, screened.screened_out()
+            case.grid.name,
+            screened.looked_at,
+            screened.screened_out()
         );
         assert!(left_out > 0 && silent > 0);
     }

@@ -41,7 +41,8 @@ fn text(rows: Vec<hedgerow::sweep::row::Row>) -> String {
 /// Source: own requirement; exact.
 #[test]
 fn one_and_two_threads_write_the_same_bytes() {
-    for mode in [Mode::Static, Mode::Closed(ClosedLoop { duration_s: 12.0, ..Default::default() })] {
+    for mode in [Mode::Static, Mode::Closed(ClosedLoop { duration_s: 12.0, ..Default::default() })]
+    {
         let plan = plan(mode);
         let one = sweep(&plan, 1, BTreeMap::new(), &|_| true).unwrap();
         let two = sweep(&plan, 2, BTreeMap::new(), &|_| true).unwrap();

@@ -30,7 +30,12 @@ fn table(name: &str, areas: usize) -> Vec<(Totals, Totals)> {
     };
     FACTORS
         .iter()
-        .map(|&f| (of(f, Form::Divided, Balancing::Steward), of(f, Form::AsItIs, Balancing::AreaControlError)))
+        .map(|&f| {
+            (
+                of(f, Form::Divided, Balancing::Steward),
+                of(f, Form::AsItIs, Balancing::AreaControlError),
+            )
+        })
         .collect()
 }
 
@@ -42,7 +47,9 @@ fn trees_under_stewards_lose_less_load_than_the_mesh_under_area_control_error() 
         [("ieee39_3areas.grid.toml", 3), ("ieee57.grid.toml", 3), ("ieee118.grid.toml", 3)]
     {
         let rows = table(name, areas);
-        println!("{name}: factor, outages with load lost and mean lost: stewards on tree | area control error on mesh");
+        println!(
+            "{name}: factor, outages with load lost and mean lost: stewards on tree | area control error on mesh"
+        );
         for (s, a) in &rows {
             println!(
                 "  {:?}: {:.1} % {:.3} % | {:.1} % {:.3} %{}",
@@ -51,7 +58,9 @@ fn trees_under_stewards_lose_less_load_than_the_mesh_under_area_control_error() 
                 s.mean_lost_percent,
                 a.with_loss_percent,
                 a.mean_lost_percent,
-                if s.with_loss_percent > a.with_loss_percent || s.mean_lost_percent > a.mean_lost_percent {
+                if s.with_loss_percent > a.with_loss_percent
+                    || s.mean_lost_percent > a.mean_lost_percent
+                {
                     "  (the trend does not hold)"
                 } else {
                     ""
@@ -59,7 +68,11 @@ fn trees_under_stewards_lose_less_load_than_the_mesh_under_area_control_error() 
             );
         }
         for (steward, baseline) in &rows {
-            assert!(steward.mean_lost_percent < baseline.mean_lost_percent, "{name} {:?}", steward.factor);
+            assert!(
+                steward.mean_lost_percent < baseline.mean_lost_percent,
+                "{name} {:?}",
+                steward.factor
+            );
         }
     }
 }

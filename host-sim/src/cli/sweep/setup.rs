@@ -91,7 +91,8 @@ fn read_and_divide(
             Ok((division.grid, Some(open)))
         }
         Err(DivideError::OneArea) => {
-            notes.push("One area: there is no divided form; propose areas with --areas.".to_owned());
+            notes
+                .push("One area: there is no divided form; propose areas with --areas.".to_owned());
             Ok((grid, None))
         }
         Err(why) => Err(Failure::Input(why.to_string())),
@@ -102,7 +103,10 @@ fn note_feeders(grid: &Grid, args: &Args, notes: &mut Vec<String>) {
     if grid.feeders.is_empty() {
         notes.push("No feeder can be shed: what the stewards can not meet is left to protection. Add feeders to the file, or --feeders 100.".to_owned());
     } else if args.feeders > 0.0 {
-        notes.push(format!("Where the file lists no feeder, {} % of every load can be shed.", args.feeders));
+        notes.push(format!(
+            "Where the file lists no feeder, {} % of every load can be shed.",
+            args.feeders
+        ));
     }
 }
 
@@ -185,7 +189,10 @@ fn note_schemes(schemes: &[Balancing], args: &Args, notes: &mut Vec<String>) {
         notes.push("Redispatch: the operator knows everything and moves every unit within its ramp; lines are taken to stand their overload for that long, which flatters it.".to_owned());
     }
     if args.closed_loop {
-        notes.push("Closed loop: nothing trips on heat; lines above their rating at the end are counted.".to_owned());
+        notes.push(
+            "Closed loop: nothing trips on heat; lines above their rating at the end are counted."
+                .to_owned(),
+        );
     } else {
         notes.push(format!(
             "Protection: a line opens above 100.1 % of its rating and {} MW; frequency relays act beyond {} % of nominal; load so lost stays lost.",

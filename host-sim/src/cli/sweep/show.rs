@@ -42,7 +42,15 @@ pub(super) fn summary(args: &Args, d: &Document) -> String {
     let _ = writeln!(
         out,
         "{:<8} {:<9} {:<19} {:>7} {:>9} {:>9} {:>8} {:>8} {:>8}",
-        "ratings", "form", "scheme", "outages", "with loss", "mean lost", "worst", "moved", "followed"
+        "ratings",
+        "form",
+        "scheme",
+        "outages",
+        "with loss",
+        "mean lost",
+        "worst",
+        "moved",
+        "followed"
     );
     for t in &d.totals {
         let _ = writeln!(
@@ -79,7 +87,8 @@ pub(super) fn summary(args: &Args, d: &Document) -> String {
         let _ = writeln!(out, "  {note}");
     }
     if d.stopped {
-        let _ = writeln!(out, "\nStopped before its end: go on with --resume and the same options.");
+        let _ =
+            writeln!(out, "\nStopped before its end: go on with --resume and the same options.");
     }
     out
 }

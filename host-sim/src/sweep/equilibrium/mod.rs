@@ -129,8 +129,7 @@ fn adopt(state: &mut State, pieces: &Pieces, found: &Found) {
     let base_mw: Vec<f64> = grid.units.iter().map(|u| u.base_mw).collect();
     for island in 0..state.islands {
         let here = |b: usize| state.island[b] == Some(island);
-        let governed =
-            (0..grid.buses.len()).any(|b| here(b) && pieces.role[b] == Role::Main);
+        let governed = (0..grid.buses.len()).any(|b| here(b) && pieces.role[b] == Role::Main);
         let injection = state.injection_mw();
         let surplus_mw: f64 = (0..injection.len()).filter(|&b| here(b)).map(|b| injection[b]).sum();
         if !governed {

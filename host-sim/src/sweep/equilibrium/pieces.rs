@@ -41,7 +41,8 @@ impl Pieces {
             (0..ends.len()).map(|l| state.closed[l] && !is_tie(grid, l)).collect();
         let (piece, count) = components(grid.buses.len(), &ends, &inside);
         let main = main_pieces(state, &piece, count);
-        let is_main = |b: usize| state.island[b].is_some() && main[grid.buses[b].area] == Some(piece[b]);
+        let is_main =
+            |b: usize| state.island[b].is_some() && main[grid.buses[b].area] == Some(piece[b]);
         let mut governed = vec![false; state.islands];
         for b in (0..piece.len()).filter(|&b| is_main(b)) {
             if let Some(island) = state.island[b] {
@@ -66,8 +67,11 @@ impl Pieces {
             .collect();
         let area_ends: Vec<(usize, usize)> =
             ends.iter().map(|&(a, b)| (grid.buses[a].area, grid.buses[b].area)).collect();
-        let joins: Vec<bool> =
-            live_tie.iter().zip(&state.case.meshed).map(|(&live, &meshed)| live && meshed).collect();
+        let joins: Vec<bool> = live_tie
+            .iter()
+            .zip(&state.case.meshed)
+            .map(|(&live, &meshed)| live && meshed)
+            .collect();
         let (angle_group, _) = components(grid.areas.len(), &area_ends, &joins);
         Pieces { role, first_bus, live_tie, angle_group }
     }
@@ -75,7 +79,8 @@ impl Pieces {
     /// Ties open to help at these rungs: near enough to an area that leans.
     pub(super) fn open_ties(&self, state: &State, rungs: &[u8], hops: u8) -> Vec<bool> {
         let grid = &state.case.grid;
-        let ends = |l: usize| (grid.buses[grid.lines[l].from].area, grid.buses[grid.lines[l].to].area);
+        let ends =
+            |l: usize| (grid.buses[grid.lines[l].from].area, grid.buses[grid.lines[l].to].area);
         let ties: Vec<usize> = (0..self.live_tie.len()).filter(|&l| self.live_tie[l]).collect();
         let mut distance: Vec<usize> =
             rungs.iter().map(|&r| if r >= 1 { 0 } else { usize::MAX }).collect();
@@ -105,9 +110,8 @@ fn main_pieces(state: &State, piece: &[usize], count: usize) -> Vec<Option<usize
     let mut main: Vec<Option<usize>> = vec![None; grid.areas.len()];
     for bus in (0..piece.len()).filter(|&b| state.island[b].is_some()) {
         let (area, own) = (grid.buses[bus].area, piece[bus]);
-        let better = main[area].is_none_or(|best| {
-            (capacity_mva[own], size[own]) > (capacity_mva[best], size[best])
-        });
+        let better = main[area]
+            .is_none_or(|best| (capacity_mva[own], size[own]) > (capacity_mva[best], size[best]));
         if better {
             main[area] = Some(own);
         }

@@ -146,7 +146,9 @@ impl<'a> Builder<'a> {
             Scope::Whole => (Rc::clone(&state.network), state.closed.clone()),
             Scope::Area(area) => {
                 let inside = |l: usize| {
-                    !is_tie(grid, l) && grid.buses[grid.lines[l].from].area == area && state.closed[l]
+                    !is_tie(grid, l)
+                        && grid.buses[grid.lines[l].from].area == area
+                        && state.closed[l]
                 };
                 let closed: Vec<bool> = (0..grid.lines.len()).map(inside).collect();
                 (Rc::new(Network::new(grid, &closed)?), closed)
@@ -191,7 +193,13 @@ impl<'a> Builder<'a> {
         role == Role::Main && (self.scope == Scope::Whole || self.scope == Scope::Area(area))
     }
 
-    fn variable(&mut self, what: Variable, place: Option<usize>, cost: (f64, f64), range: (f64, f64)) -> usize {
+    fn variable(
+        &mut self,
+        what: Variable,
+        place: Option<usize>,
+        cost: (f64, f64),
+        range: (f64, f64),
+    ) -> usize {
         self.variables.push(what);
         self.place.push(place);
         self.program.add_variable(cost.0, cost.1, range.0, range.1)
@@ -387,7 +395,12 @@ impl<'a> Builder<'a> {
     }
 
     /// `b (mid - base - mid' + base') + (b / b') mu' - mu = 0`, primes for the first tie.
-    fn add_mid_angle(&mut self, line: usize, first: usize, mu: Option<usize>) -> Result<(), DcError> {
+    fn add_mid_angle(
+        &mut self,
+        line: usize,
+        first: usize,
+        mu: Option<usize>,
+    ) -> Result<(), DcError> {
         let mut parts = Vec::new();
         let lines = &self.setting.state.case.grid.lines;
         let ratio = lines[first].reactance_pu / lines[line].reactance_pu;
