@@ -6,14 +6,18 @@
 //! independent optimum; `report` writes it down; `cli` is the thin front.
 
 pub mod baseline;
+pub mod bench;
 pub mod case;
 pub mod charter;
 pub mod cli;
 pub mod divide;
+pub mod fit;
 pub mod grid;
 pub mod judge;
 pub mod link;
+pub mod margins;
 pub mod plant;
 pub mod record;
 pub mod rehearsal;
 pub mod report;
+pub mod sweep;

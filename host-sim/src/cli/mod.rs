@@ -4,12 +4,16 @@
 //! exit code. Results go to stdout, progress and problems to stderr. Colour is
 //! used only on a terminal, never with `NO_COLOR`, and never alone.
 
+pub mod bench;
 pub mod check;
 pub mod divide;
+pub mod fit;
 pub mod import;
+pub mod margins;
 pub mod new;
 mod progress;
 pub mod rehearse;
+pub mod sweep;
 
 use std::io::{IsTerminal, Write};
 
@@ -57,12 +61,20 @@ pub struct Cli {
 pub enum Command {
     /// Run a disturbance in closed loop, judge its end and write the report.
     Rehearse(rehearse::Args),
+    /// Run a play with boards in the loop, in lockstep, and keep every frame.
+    Bench(bench::Args),
+    /// Show whether each area's steward fits a chip, from images built and run now.
+    Fit(fit::Args),
     /// Read a grid or a play and say what it holds, or what is wrong with it.
     Check(check::Args),
     /// Turn an IEEE Common Data Format file into a grid file.
     Import(import::Args),
     /// Choose the tie lines to leave open so that the areas form a tree.
     Divide(divide::Args),
+    /// Run every credible outage, at several loading levels, under several schemes.
+    Sweep(sweep::Args),
+    /// Find how far each imperfection can go before a play stops settling.
+    Margins(margins::Args),
     /// Write a commented grid and play to start from, or a made-up grid.
     New(new::Args),
 }
@@ -73,9 +85,13 @@ pub enum Command {
 pub fn run(cli: &Cli) -> Result<Ending, Failure> {
     match &cli.command {
         Command::Rehearse(args) => rehearse::run(args),
+        Command::Bench(args) => bench::run(args),
+        Command::Fit(args) => fit::run(args),
         Command::Check(args) => check::run(args),
         Command::Import(args) => import::run(args),
         Command::Divide(args) => divide::run(args),
+        Command::Sweep(args) => sweep::run(args),
+        Command::Margins(args) => margins::run(args),
         Command::New(args) => new::run(args),
     }
 }
