@@ -10,7 +10,8 @@
 //! line rows are divided by their norm over the same columns (factor `e`); a
 //! power iteration gives the step.
 
-use super::kernel::{at, dot, entry, mat_vec, max, max_abs, put, sqrt};
+use super::blocks::Blocks;
+use super::kernel::{at, dot, max, max_abs, put, sqrt};
 use core::ops::Range;
 use hedgerow_protocol::limits::TIES_MAX;
 use nalgebra::{ArrayStorage, SMatrix};
@@ -46,8 +47,7 @@ pub enum Column {
 /// A scaled problem matrix.
 #[derive(Clone, Debug)]
 pub struct Scaled<const X: usize, const R: usize> {
-    pub(crate) a: SMatrix<f32, R, X>,
-    pub(crate) at: SMatrix<f32, X, R>,
+    pub(crate) a: Blocks<X, R>,
     pub(crate) s: [f32; X],
     pub(crate) e: [f32; R],
     t: [[f32; EQUALITIES_MAX]; EQUALITIES_MAX],
@@ -67,8 +67,7 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
     /// An empty problem: all zero, so that a static one takes no flash.
     pub const fn new() -> Self {
         Self {
-            a: zeros(),
-            at: zeros(),
+            a: Blocks::new(),
             s: [0.0; X],
             e: [0.0; R],
             t: [[0.0; EQUALITIES_MAX]; EQUALITIES_MAX],
@@ -103,7 +102,7 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
     }
 
     /// The matrix, to be filled with physical rows before [`Self::scale`].
-    pub fn matrix_mut(&mut self) -> &mut SMatrix<f32, R, X> {
+    pub fn matrix_mut(&mut self) -> &mut Blocks<X, R> {
         &mut self.a
     }
 
@@ -125,43 +124,26 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
         self.rows = rows.min(R);
         self.eqs = eqs.min(EQUALITIES_MAX).min(self.rows);
         self.scale_columns(curvature, columns);
-        self.transpose();
         self.orthonormalise();
         self.normalise_lines();
-        self.untranspose();
         self.sigma = self.step(0..0);
         self.sigma_flows_fixed = self.step(flows.clone());
         self.sigma_ties_fixed = self.step(flows.start..self.cols);
     }
 
     fn scale_columns(&mut self, curvature: &[f32], columns: &[Column]) {
-        let rows = self.rows;
-        for (j, column) in self.a.data.0.iter_mut().enumerate() {
-            let kind = columns.get(j).copied().unwrap_or(Column::Closed);
-            let s = sqrt(max(at(curvature, j), 1e-6));
-            put(&mut self.s, j, s);
-            if let Some(own) = self.own.get_mut(j) {
-                *own = kind == Column::Own;
-            }
-            for (i, value) in column.iter_mut().enumerate() {
-                *value = if kind == Column::Closed || i >= rows { 0.0 } else { *value / s };
-            }
+        let kind = |j: usize| columns.get(j).copied().unwrap_or(Column::Closed);
+        for (j, (s, own)) in self.s.iter_mut().zip(&mut self.own).enumerate() {
+            *s = sqrt(max(at(curvature, j), 1e-6));
+            *own = kind(j) == Column::Own;
         }
-    }
-
-    fn transpose(&mut self) {
-        for (i, row) in self.at.data.0.iter_mut().enumerate() {
-            for (j, value) in row.iter_mut().enumerate() {
-                *value = entry(&self.a, i, j);
+        for i in 0..R {
+            let mut row = self.a.row(i);
+            for (j, (value, s)) in row.iter_mut().zip(&self.s).enumerate() {
+                let closed = kind(j) == Column::Closed || i >= self.rows;
+                *value = if closed { 0.0 } else { *value / s };
             }
-        }
-    }
-
-    fn untranspose(&mut self) {
-        for (j, column) in self.a.data.0.iter_mut().enumerate() {
-            for (i, value) in column.iter_mut().enumerate() {
-                *value = entry(&self.at, j, i);
-            }
+            self.a.set_row(i, &row);
         }
     }
 
@@ -170,37 +152,41 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
         self.t = [[0.0; EQUALITIES_MAX]; EQUALITIES_MAX];
         let (own, cols) = (&self.own, self.cols);
         for i in 0..self.eqs {
-            let (before, rest) = self.at.data.0.split_at_mut_checked(i).unwrap_or_default();
+            let mut row = self.a.row(i);
             let (t_before, t_rest) = self.t.split_at_mut_checked(i).unwrap_or_default();
-            let (Some(row), Some(t_row)) = (rest.first_mut(), t_rest.first_mut()) else {
+            let Some(t_row) = t_rest.first_mut() else {
                 return;
             };
             put(t_row, i, 1.0);
-            let original = sqrt(own_dot(row, row, own));
+            let original = sqrt(own_dot(&row, &row, own));
             let whole = sqrt(row.iter().take(cols).fold(0.0, |sum, x| sum + x * x));
-            for (earlier, t_earlier) in before.iter().zip(t_before.iter()) {
-                let share = own_dot(row, earlier, own);
-                subtract(row, share, earlier);
+            for (k, t_earlier) in t_before.iter().enumerate() {
+                let earlier = self.a.row(k);
+                let share = own_dot(&row, &earlier, own);
+                subtract(&mut row, share, &earlier);
                 subtract(t_row, share, t_earlier);
             }
-            let left = sqrt(own_dot(row, row, own));
+            let left = sqrt(own_dot(&row, &row, own));
             let norm = max(max(left, ROW_FLOOR * original), max(ROW_FLOOR * whole, 1e-6));
             let norm = if whole > 0.0 { norm } else { 1.0 };
             row.iter_mut().chain(t_row.iter_mut()).for_each(|x| *x /= norm);
+            self.a.set_row(i, &row);
         }
     }
 
     fn normalise_lines(&mut self) {
         let (own, eqs, rows) = (&self.own, self.eqs, self.rows);
-        for (i, (row, e)) in self.at.data.0.iter_mut().zip(&mut self.e).enumerate() {
+        for (i, e) in self.e.iter_mut().enumerate() {
             *e = 1.0;
             if i < eqs || i >= rows {
                 continue;
             }
-            let norm = sqrt(own_dot(row, row, own));
+            let mut row = self.a.row(i);
+            let norm = sqrt(own_dot(&row, &row, own));
             if norm >= NORM_MIN {
                 *e = 1.0 / norm;
                 row.iter_mut().for_each(|x| *x /= norm);
+                self.a.set_row(i, &row);
             }
         }
     }
@@ -215,13 +201,13 @@ impl<const X: usize, const R: usize> Scaled<X, R> {
         let mut u = [0.0; X];
         let mut eigenvalue = 0.0;
         for _ in 0..POWER_STEPS {
-            mat_vec(&self.at, &w, self.cols, self.rows, &mut u);
+            self.a.transposed_times(&w, self.rows, self.cols, &mut u);
             u.get_mut(left_out.clone()).unwrap_or_default().fill(0.0);
             let size = dot(&w, &w);
             if size > 0.0 {
                 eigenvalue = dot(&u, &u) / size;
             }
-            mat_vec(&self.a, &u, self.rows, self.cols, &mut w);
+            self.a.times(&u, self.rows, self.cols, &mut w);
             let most = max_abs(&w);
             if most > 0.0 {
                 w.iter_mut().for_each(|x| *x /= most);

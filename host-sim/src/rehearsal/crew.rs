@@ -18,7 +18,7 @@ use hedgerow_protocol::auth::{Key, REHEARSAL_KEY};
 use hedgerow_protocol::message::{BasePoint, Message, Restore, Schedule};
 
 /// A node that holds the largest area.
-pub type HostNode = Node<64, 104, 112>;
+pub type HostNode = Node<64, 112, 112>;
 /// Seconds of silence after which an actuator follows its own rule.
 const SILENCE_S: f64 = 2.0;
 
