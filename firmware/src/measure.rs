@@ -231,7 +231,8 @@ impl<const R: usize> Estimate<R> {
     /// One tick's update.
     ///
     /// Units: pu. `active` says for each actuator whether its output counts as
-    /// controlled; what does not count is part of the load.
+    /// controlled, `ties` the same for each tie's flow; what does not count is part
+    /// of the load.
     /// Cost: n^2 + lines flops.
     pub fn update<const B: usize, const X: usize>(
         &mut self,
@@ -239,11 +240,12 @@ impl<const R: usize> Estimate<R> {
         network: &Network<B, R>,
         measured: &Measured<B, X, R>,
         active: &[bool; X],
+        ties: &[bool; TIES_MAX],
     ) -> Sight {
         let Some(freq_dev_hz) = measured.freq_dev_hz else {
             return Sight::None;
         };
-        let Some((injection, balance)) = injections(plan, network, measured, active) else {
+        let Some((injection, balance)) = injections(plan, network, measured, active, ties) else {
             return Sight::Partial;
         };
         if self.frozen_ticks > 0 && self.started {
@@ -319,6 +321,7 @@ fn injections<const B: usize, const X: usize, const R: usize>(
     network: &Network<B, R>,
     measured: &Measured<B, X, R>,
     active: &[bool; X],
+    ties: &[bool; TIES_MAX],
 ) -> Option<([f32; B], f32)> {
     let mut injection = [0.0; B];
     let mut balance = 0.0;
@@ -335,10 +338,10 @@ fn injections<const B: usize, const X: usize, const R: usize>(
             balance += output;
         }
     }
-    let ties = plan.ties.iter().zip(&measured.tie_flow).zip(&measured.tie_closed);
-    for ((tie, flow), &closed) in ties {
+    let ties = plan.ties.iter().zip(&measured.tie_flow).zip(ties);
+    for ((tie, flow), &counts) in ties {
         let bus = usize::from(tie.bus);
-        if closed && network.is_kept(bus) {
+        if counts && network.is_kept(bus) {
             let (flow, before) = ((*flow)?, at(&injection, bus));
             put(&mut injection, bus, before - flow);
             balance -= flow;

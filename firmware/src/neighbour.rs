@@ -126,8 +126,8 @@ impl TieEnd {
             self.heard = true;
             self.theirs = *terms;
             self.silent_ticks = 0;
+            self.advance(terms, settings);
         }
-        self.advance(terms, settings);
         true
     }
 
@@ -206,9 +206,10 @@ impl TieEnd {
             tick,
             round: self.round,
             ready: self.ready,
-            bid: self.bid,
-            bid_before: self.bid_before,
-            deviation: self.deviation,
+            // Adding zero turns -0 into +0.
+            bid: self.bid.map(|x| x + 0.0),
+            bid_before: self.bid_before.map(|x| x + 0.0),
+            deviation: self.deviation.map(|x| x + 0.0),
             open: asks && self.controllable,
             detached: !self.controllable,
             distance,

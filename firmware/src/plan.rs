@@ -7,7 +7,7 @@
 //! Order of the unknowns, everywhere: units, feeders, tie deviations, mid-tie
 //! angle deviations (one of each per tie).
 
-use crate::law::kernel::put;
+use crate::law::kernel::{abs, put};
 use crate::law::scale::zeros;
 use heapless::Vec;
 use hedgerow_protocol::charter::{
@@ -179,6 +179,7 @@ impl<const B: usize, const X: usize, const R: usize> Plan<B, X, R> {
                 && bus(line.to)
                 && line.from != line.to
                 && fine(line.susceptance)
+                && abs(line.susceptance) > 1.0 / VALUE_MAX
                 && positive(line.rating)
         });
         let ties = self.ties.iter().all(|tie| {

@@ -5,7 +5,6 @@
 
 mod acceptance;
 mod catalogue;
-mod cli;
 mod closed39;
 mod codes;
 mod frequency;

@@ -4,38 +4,99 @@
 //! ranges and the duals inside the clamp, whatever the numbers were, so nothing
 //! winds up. Warm start: the state is kept from tick to tick.
 
-use super::kernel::{abs, clip, soft, sqrt};
+use super::kernel::{clip, max, soft, sqrt};
 use super::limits::Limits;
 use super::scale::Scaled;
 
-/// Steps after a restart for which the momentum still grows; then it is held.
-const MOMENTUM_LEN: usize = 256;
+/// A number in two parts, the second below the rounding of the first.
+///
+/// A dual of 100 has a last digit of 8e-6, and a step shorter than that would be
+/// lost: rows would then rest up to 8e-6 / sigma off their limits. With the rest
+/// kept, the floor of the set-points falls from 1e-2 to 1e-5 pu (worst of 154 problems).
+#[derive(Clone, Copy, Debug)]
+struct Fine {
+    head: f32,
+    rest: f32,
+}
 
-/// Momentum by steps since the last restart: (tau - 1) / tau', tau' = (1 + sqrt(1 + 4 tau^2)) / 2.
-static MOMENTUM: [f32; MOMENTUM_LEN] = momentum();
+impl Fine {
+    const ZERO: Self = Self { head: 0.0, rest: 0.0 };
 
-const fn momentum() -> [f32; MOMENTUM_LEN] {
-    let mut table = [0.0; MOMENTUM_LEN];
-    let mut tau = 1.0_f64;
-    let mut k = 0;
-    while k < MOMENTUM_LEN {
-        // Newton from above: 1 + 4 tau^2 lies between (2 tau)^2 and (2 tau + 1)^2.
-        let square = 1.0 + 4.0 * tau * tau;
-        let mut root = 2.0 * tau + 1.0;
-        let mut step = 0;
-        while step < 8 {
-            root = 0.5 * (root + square / root);
-            step += 1;
-        }
-        let next = 0.5 * (1.0 + root);
-        #[allow(clippy::indexing_slicing)] // evaluated by the compiler, never on a board
-        {
-            table[k] = ((tau - 1.0) / next) as f32;
-        }
-        tau = next;
-        k += 1;
+    /// The sum with an ordinary number; exact but for the rounding of the rest.
+    ///
+    /// Source: error-free sum, D. Knuth, "The Art of Computer Programming", vol. 2, 4.2.2.
+    #[inline(always)]
+    fn plus(self, by: f32) -> Self {
+        let sum = self.head + by;
+        let shared = sum - self.head;
+        let lost = (self.head - (sum - shared)) + (by - shared) + self.rest;
+        let head = sum + lost;
+        Self { head, rest: lost - (head - sum) }
     }
-    table
+
+    /// The difference, rounded once.
+    #[inline(always)]
+    fn minus(self, other: Self) -> f32 {
+        (self.head - other.head) + (self.rest - other.rest)
+    }
+}
+
+/// Share of the remembered curvature that is kept from step to step: about 100 steps of memory.
+const CURVATURE_KEEP: f32 = 0.99;
+/// Head-room over the curvature met on the last step, which is a lower bound.
+const CURVATURE_MARGIN: f32 = 1.5;
+/// The step is never longer than this many safe steps.
+const STEP_MOST: f32 = 8.0;
+
+/// Clamp of the scaled duals in an ordinary area.
+const CLAMP: f32 = 2000.0;
+/// Scaled range up to which an area is ordinary.
+const REACH: f32 = 20.0;
+
+/// Clamp of the scaled duals that lets a proof outweigh the costs.
+///
+/// `reach` is the largest range of a unit times the root of its curvature: the
+/// price at which it goes from end to end; its square is the cost of doing so. A
+/// violation times the clamp must be far above that, or the duals stop before
+/// costs are negligible against them, and no proof appears: 3 of 634 problems
+/// impossible by 0.5 MW or more were missed at 2000, all with far larger costs.
+pub fn dual_clamp(reach: f32) -> f32 {
+    let share = reach / REACH;
+    CLAMP * clip(share * share, 1.0, 100.0)
+}
+
+/// Finds how long a step may be where the duals are now.
+///
+/// The safe step is for all rows pulling on all columns at once. Few rows are
+/// active and many columns stand at an end of their range, so the curvature
+/// along the path is several times smaller. It is measured on each step,
+/// remembered for a while, and at most [`STEP_MOST`] safe steps are made of it;
+/// where it rises again the step falls at once and the restart rule takes
+/// what was overdone. Of 1322 random problems, 96.9 % instead of 92.6 % are within
+/// 1e-3 pu after 200 steps, all instead of 98 % after 1000 (`optima`).
+#[derive(Clone, Debug)]
+struct Stride<const R: usize> {
+    v: [f32; R],
+    ax: [f32; R],
+    curvature: f32,
+}
+
+impl<const R: usize> Stride<R> {
+    const fn new() -> Self {
+        Self { v: [0.0; R], ax: [0.0; R], curvature: 0.0 }
+    }
+
+    /// The step from `v`, where the rows stand at `ax`; `safe` is always allowed.
+    fn next(&mut self, v: &[f32; R], ax: &[f32; R], rows: usize, safe: f32) -> f32 {
+        let last = (head_mut(&mut self.v, rows), head_mut(&mut self.ax, rows));
+        let (bend, way) = bend_of(last, head(v, rows), head(ax, rows));
+        let met = if way > 0.0 { bend / way } else { 0.0 };
+        let most = 1.0 / safe;
+        let wish = max(CURVATURE_KEEP * self.curvature, CURVATURE_MARGIN * met);
+        // Anything that is not a number becomes the safe curvature.
+        self.curvature = clip(wish, most / STEP_MOST, most);
+        1.0 / self.curvature
+    }
 }
 
 /// State of one instance of the iteration.
@@ -43,28 +104,43 @@ const fn momentum() -> [f32; MOMENTUM_LEN] {
 pub struct Iterate<const X: usize, const R: usize> {
     pub(crate) x: [f32; X],
     pub(crate) y: [f32; R],
+    y_rest: [f32; R],
     v: [f32; R],
+    v_rest: [f32; R],
     pub(crate) ax: [f32; R],
-    momentum: usize,
+    stride: Stride<R>,
+    /// Steps of growing momentum; held at the largest number, a momentum of 1 - 5e-5.
+    momentum: u16,
 }
 
 impl<const X: usize, const R: usize> Iterate<X, R> {
     /// Cold start.
     pub const fn new() -> Self {
-        Self { x: [0.0; X], y: [0.0; R], v: [0.0; R], ax: [0.0; R], momentum: 0 }
+        Self {
+            x: [0.0; X],
+            y: [0.0; R],
+            y_rest: [0.0; R],
+            v: [0.0; R],
+            v_rest: [0.0; R],
+            ax: [0.0; R],
+            stride: Stride::new(),
+            momentum: 0,
+        }
     }
 
     /// Forget the duals.
     pub fn reset(&mut self) {
-        self.y = [0.0; R];
-        self.v = [0.0; R];
-        self.momentum = 0;
+        self.set_dual(&[0.0; R]);
     }
 
     /// Go on from these scaled duals, without momentum.
     pub fn set_dual(&mut self, y: &[f32; R]) {
         self.y = *y;
         self.v = *y;
+        self.y_rest = [0.0; R];
+        self.v_rest = [0.0; R];
+        self.stride.v = *y;
+        self.stride.curvature = 0.0;
         self.momentum = 0;
     }
 
@@ -73,9 +149,9 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
         &self.y
     }
 
-    /// Make `count` steps of length `sigma`.
+    /// Make `count` steps; `sigma` is the safe step of this matrix.
     ///
-    /// Cost: `count` times (4 rows x cols + 8 rows + 6 cols) flops.
+    /// Cost: `count` times (4 rows x cols + 50 rows + 6 cols) flops.
     pub fn run(
         &mut self,
         scaled: &Scaled<X, R>,
@@ -84,9 +160,9 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
         clamp: f32,
         count: u16,
     ) {
-        const { assert!(X.is_multiple_of(2) && R.is_multiple_of(4), "whole groups") };
-        // Rounded up to whole groups: what is beyond is zero and stays so.
-        let (rows, cols) = (scaled.rows.next_multiple_of(4).min(R), scaled.cols);
+        const { assert!(X.is_multiple_of(2), "unknowns go in pairs") };
+        let (rows, cols) = (scaled.rows, scaled.cols);
+        // Rounded up to whole pairs: what is beyond is closed and stays so.
         let pairs = cols.next_multiple_of(2).min(X);
         let unknowns = Unknowns {
             low: head(&limits.low, pairs),
@@ -94,29 +170,42 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
             pull: head(&limits.pull, pairs),
             weight: head(&limits.weight, pairs),
         };
-        let ends = (head(&limits.row_low, rows), head(&limits.row_high, rows));
-        let inverse = 1.0 / sigma;
-        let mut spare = self.y;
-        // The duals and the next ones change places after each step.
-        let (mut y, mut next) = (head_mut(&mut self.y, rows), head_mut(&mut spare, rows));
+        let ends = Ends { low: head(&limits.row_low, rows), high: head(&limits.row_high, rows) };
+        let mut next = [Fine::ZERO; R];
         for _ in 0..count {
             // The unknowns that minimise the Lagrangian at v.
-            scaled.a.transposed_times(&self.v, scaled.rows, cols, &mut self.x);
+            scaled.a.transposed_times(&self.v, rows, cols, &mut self.x);
             minimise(head_mut(&mut self.x, pairs), &unknowns);
-            scaled.a.times(&self.x, scaled.rows, cols, &mut self.ax);
-            // Projected ascent on the duals, with momentum and restart.
-            let duals = Duals { y, v: head(&self.v, rows), ends };
-            let step = Step { sigma, inverse, clamp };
-            let turn = ascend(next, head(&self.ax, rows), &duals, step);
-            let beta = if turn > 0.0 { 0.0 } else { super::kernel::at(&MOMENTUM, self.momentum) };
-            self.momentum = if turn > 0.0 { 0 } else { (self.momentum + 1).min(MOMENTUM_LEN - 1) };
-            extrapolate(next, y, head_mut(&mut self.v, rows), beta);
-            core::mem::swap(&mut y, &mut next);
+            scaled.a.times(&self.x, rows, cols, &mut self.ax);
+            self.ascend(rows, &ends, sigma, clamp, &mut next);
         }
-        if count % 2 == 1 {
-            // The last duals are in the spare.
-            self.y = spare;
-        }
+    }
+
+    /// Projected ascent on the duals, with momentum and restart.
+    fn ascend(
+        &mut self,
+        rows: usize,
+        ends: &Ends<'_>,
+        sigma: f32,
+        clamp: f32,
+        next: &mut [Fine; R],
+    ) {
+        let sigma = self.stride.next(&self.v, &self.ax, rows, sigma);
+        let next = next.get_mut(..rows).unwrap_or_default();
+        let v = Split { head: head(&self.v, rows), rest: head(&self.v_rest, rows) };
+        let y = Split { head: head(&self.y, rows), rest: head(&self.y_rest, rows) };
+        let turn = climb(next, head(&self.ax, rows), (&v, &y), ends, (sigma, clamp));
+        let steps = f32::from(self.momentum);
+        let beta = if turn > 0.0 { 0.0 } else { steps / (steps + 3.0) };
+        let more = self.momentum.saturating_add(1);
+        // Half the momentum comes back at once: the path seldom turns by much.
+        self.momentum = if turn > 0.0 { self.momentum / 2 } else { more };
+        carry_on(
+            next,
+            (head_mut(&mut self.v, rows), head_mut(&mut self.v_rest, rows)),
+            (head_mut(&mut self.y, rows), head_mut(&mut self.y_rest, rows)),
+            beta,
+        );
     }
 
     /// Physical value of unknown `j`, inside `[low, high]` exactly.
@@ -136,12 +225,6 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
     }
 }
 
-impl<const X: usize, const R: usize> Default for Iterate<X, R> {
-    fn default() -> Self {
-        Self::new()
-    }
-}
-
 /// Prices and ranges of the unknowns, scaled.
 struct Unknowns<'a> {
     low: &'a [f32],
@@ -150,19 +233,16 @@ struct Unknowns<'a> {
     weight: &'a [f32],
 }
 
-/// Duals and the limits of their rows, scaled.
-struct Duals<'a> {
-    y: &'a [f32],
-    v: &'a [f32],
-    ends: (&'a [f32], &'a [f32]),
+/// Limits of the rows, scaled.
+struct Ends<'a> {
+    low: &'a [f32],
+    high: &'a [f32],
 }
 
-/// Length of a step, its inverse, and the clamp of the duals.
-#[derive(Clone, Copy)]
-struct Step {
-    sigma: f32,
-    inverse: f32,
-    clamp: f32,
+/// Duals in two parts.
+struct Split<'a> {
+    head: &'a [f32],
+    rest: &'a [f32],
 }
 
 // The loops below are not generic and not inlined, so that they are made once,
@@ -188,66 +268,79 @@ fn minimise(x: &mut [f32], unknowns: &Unknowns<'_>) {
     }
 }
 
-/// The next duals; returns how far they turn against the momentum.
-///
-/// Four rows at a time: the bookkeeping of a loop costs as much as a quiet row.
+/// How much the gradient turned along the last move of `v`, and the square of the move.
 #[inline(never)]
-fn ascend(next: &mut [f32], ax: &[f32], duals: &Duals<'_>, step: Step) -> f32 {
+fn bend_of((last_v, last_ax): (&mut [f32], &mut [f32]), v: &[f32], ax: &[f32]) -> (f32, f32) {
+    let (mut bend, mut way) = (0.0, 0.0);
+    for ((last_v, last_ax), (&v, &ax)) in last_v.iter_mut().zip(last_ax).zip(v.iter().zip(ax)) {
+        let moved = v - *last_v;
+        bend -= moved * (ax - *last_ax);
+        way += moved * moved;
+        (*last_v, *last_ax) = (v, ax);
+    }
+    (bend, way)
+}
+
+/// The next duals; returns how far they turn against the momentum.
+#[inline(never)]
+fn climb(
+    next: &mut [Fine],
+    ax: &[f32],
+    (v, y): (&Split<'_>, &Split<'_>),
+    ends: &Ends<'_>,
+    (sigma, clamp): (f32, f32),
+) -> f32 {
     let mut turn = 0.0;
-    let (next, ax) = (next.as_chunks_mut::<4>().0, ax.as_chunks::<4>().0);
-    let (low, high) = (duals.ends.0.as_chunks::<4>().0, duals.ends.1.as_chunks::<4>().0);
-    let (v, y) = (duals.v.as_chunks::<4>().0, duals.y.as_chunks::<4>().0);
-    let pairs = next.iter_mut().zip(v).zip(y);
-    for (((ax, low), high), ((next, v), y)) in ax.iter().zip(low).zip(high).zip(pairs) {
-        let ([n0, n1, n2, n3], &[a0, a1, a2, a3]) = (next, ax);
-        let (&[l0, l1, l2, l3], &[h0, h1, h2, h3]) = (low, high);
-        let (&[v0, v1, v2, v3], &[y0, y1, y2, y3]) = (v, y);
-        *n0 = next_dual(a0, (l0, h0), (v0, y0), step, &mut turn);
-        *n1 = next_dual(a1, (l1, h1), (v1, y1), step, &mut turn);
-        *n2 = next_dual(a2, (l2, h2), (v2, y2), step, &mut turn);
-        *n3 = next_dual(a3, (l3, h3), (v3, y3), step, &mut turn);
+    let rows = ax.iter().zip(ends.low.iter().zip(ends.high));
+    let duals = v.head.iter().zip(v.rest).zip(y.head.iter().zip(y.rest));
+    for ((next, (&ax, (&low, &high))), ((v, v_rest), (y, y_rest))) in
+        next.iter_mut().zip(rows).zip(duals)
+    {
+        // A row at rest inside its limits stays there: most rows, most of the time.
+        if v.to_bits() == 0 && ax >= low && ax <= high {
+            *next = Fine::ZERO;
+            continue;
+        }
+        let (v, y) = (Fine { head: *v, rest: *v_rest }, Fine { head: *y, rest: *y_rest });
+        *next = moved(v, sigma * (ax - low), sigma * (ax - high), clamp);
+        turn += v.minus(*next) * next.minus(y);
     }
     turn
 }
 
-/// The next dual of one row; zero while the row is inside its limits, and for a NaN.
+/// A dual moved by its row: up while the row is above its high limit, down while
+/// below its low one, to zero between; inside the clamp, and a number.
 #[inline(always)]
-fn next_dual(
-    ax: f32,
-    (low, high): (f32, f32),
-    (v, y): (f32, f32),
-    step: Step,
-    turn: &mut f32,
-) -> f32 {
-    let wish = v * step.inverse + ax;
-    let beyond = if wish < low {
-        wish - low
-    } else if wish > high {
-        wish - high
+fn moved(v: Fine, to_low: f32, to_high: f32, clamp: f32) -> Fine {
+    let up = v.plus(to_high);
+    let next = if up.head > 0.0 {
+        up
     } else {
-        *turn -= v * y;
-        return 0.0;
+        let down = v.plus(to_low);
+        if down.head < 0.0 { down } else { Fine::ZERO }
     };
-    let mut dual = step.sigma * beyond;
-    if !(abs(dual) <= step.clamp) {
-        dual = clip(dual, -step.clamp, step.clamp);
-    }
-    *turn += (v - dual) * (dual - y);
-    dual
+    let head = clip(next.head, -clamp, clamp);
+    if head == next.head { next } else { Fine { head, rest: 0.0 } }
 }
 
-/// `v` = `next` carried on by the momentum.
+/// `v` = `next` carried on by the momentum; `y` = `next`.
 #[inline(never)]
-fn extrapolate(next: &[f32], y: &[f32], v: &mut [f32], beta: f32) {
-    let (next, y) = (next.as_chunks::<4>().0, y.as_chunks::<4>().0);
-    for ((&[n0, n1, n2, n3], &[y0, y1, y2, y3]), v) in
-        next.iter().zip(y).zip(v.as_chunks_mut::<4>().0)
-    {
-        let [v0, v1, v2, v3] = v;
-        *v0 = n0 + beta * (n0 - y0);
-        *v1 = n1 + beta * (n1 - y1);
-        *v2 = n2 + beta * (n2 - y2);
-        *v3 = n3 + beta * (n3 - y3);
+fn carry_on(
+    next: &[Fine],
+    (v, v_rest): (&mut [f32], &mut [f32]),
+    (y, y_rest): (&mut [f32], &mut [f32]),
+    beta: f32,
+) {
+    let duals = v.iter_mut().zip(v_rest).zip(y.iter_mut().zip(y_rest));
+    for (((v, v_rest), (y, y_rest)), next) in duals.zip(next) {
+        // Where a head is zero its rest is too.
+        if next.head.to_bits() == 0 && y.to_bits() == 0 {
+            (*v, *v_rest) = (0.0, 0.0);
+            continue;
+        }
+        let ahead = next.plus(beta * next.minus(Fine { head: *y, rest: *y_rest }));
+        (*v, *v_rest) = (ahead.head, ahead.rest);
+        (*y, *y_rest) = (next.head, next.rest);
     }
 }
 
@@ -259,4 +352,50 @@ fn head(values: &[f32], count: usize) -> &[f32] {
 fn head_mut(values: &mut [f32], count: usize) -> &mut [f32] {
     let count = count.min(values.len());
     values.get_mut(..count).unwrap_or_default()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn small_steps_are_not_lost_on_a_large_dual() {
+        let mut fine = Fine { head: 1000.0, rest: 0.0 };
+        for _ in 0..10_000 {
+            fine = fine.plus(1e-5);
+        }
+        let gained = fine.minus(Fine { head: 1000.0, rest: 0.0 });
+        assert!((gained - 0.1).abs() < 1e-4, "{gained}");
+        // In one part the same steps vanish.
+        assert_eq!(1000.0_f32 + 1e-5, 1000.0);
+    }
+
+    #[test]
+    fn stride_is_long_where_it_is_flat_and_safe_where_it_is_steep() {
+        let mut stride = Stride::<2>::new();
+        let safe = 0.1;
+        assert!((stride.next(&[0.0; 2], &[0.0; 2], 2, safe) - STEP_MOST * safe).abs() < 1e-6);
+        // Curvature 10 along the step is all that the safe step allows for.
+        let short = stride.next(&[1.0, 0.0], &[-10.0, 0.0], 2, safe);
+        assert!((short - safe).abs() < 1e-6, "{short}");
+        let spoilt = stride.next(&[1.0, f32::NAN], &[-10.0, 0.0], 2, safe);
+        assert!(spoilt >= safe && spoilt <= STEP_MOST * safe, "{spoilt}");
+    }
+
+    #[test]
+    fn duals_stay_numbers_inside_the_clamp() {
+        for way in [f32::NAN, f32::INFINITY, f32::NEG_INFINITY, 1e38, -1e38] {
+            for v in [0.0, 5.0, -10.0] {
+                let next = moved(Fine { head: v, rest: 0.0 }, way, way, 10.0);
+                assert!(next.head.abs() <= 10.0 && next.rest.is_finite(), "{way} {v}");
+            }
+        }
+    }
+
+    #[test]
+    fn clamp_is_the_ordinary_one_up_to_the_ordinary_reach() {
+        assert_eq!(dual_clamp(8.0), CLAMP);
+        assert_eq!(dual_clamp(40.0), 4.0 * CLAMP);
+        assert_eq!(dual_clamp(f32::NAN), 100.0 * CLAMP);
+    }
 }

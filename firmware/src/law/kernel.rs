@@ -54,10 +54,8 @@ pub fn sqrt(x: f32) -> f32 {
     if !(x > 0.0 && x < f32::MAX) {
         return 0.0;
     }
-    let mut root = F32Ext::sqrt(x);
-    if !(root > 0.0) {
-        root = x;
-    }
+    let estimate = F32Ext::sqrt(x);
+    let mut root = if estimate > 0.0 { estimate } else { x };
     for _ in 0..4 {
         root = 0.5 * (root + x / root);
     }

@@ -49,6 +49,8 @@ pub struct Steward<const B: usize, const X: usize, const R: usize> {
     estimate: Estimate<R>,
     rows: Rows,
     tie_closed: [bool; TIES_MAX],
+    /// Ties closed and controlled at the other end too; the others' flow is load.
+    tie_counts: [bool; TIES_MAX],
     unit_on: [bool; X],
     schedule: [Ramped; TIES_MAX],
     base: [Ramped; X],
@@ -83,6 +85,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             estimate: Estimate::new(),
             rows: Rows::new(),
             tie_closed: [false; TIES_MAX],
+            tie_counts: [false; TIES_MAX],
             unit_on: [false; X],
             schedule: [Ramped::at(0.0); TIES_MAX],
             base: [Ramped::at(0.0); X],
@@ -117,6 +120,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         self.missed_ticks = 0;
         self.estimate = Estimate::new();
         self.tie_closed = self.measured.tie_closed;
+        self.tie_counts = self.tie_closed;
         self.unit_on = self.measured.unit_in_service;
         for (schedule, tie) in self.schedule.iter_mut().zip(&self.plan.ties) {
             *schedule = Ramped::at(tie.schedule);
@@ -137,7 +141,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         self.judgement = Judgement::new();
         self.ladder = Ladder::new();
         self.verdict = Verdict::Blind;
-        self.rows.choose(&self.plan, &self.network, &self.tie_closed);
+        self.rows.choose(&self.plan, &self.network, &self.tie_counts);
         self.refresh_boxes();
         self.rebuild();
         self.ready = true;
@@ -198,7 +202,13 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         let moved = self.follow_statuses();
         self.pass_ramps();
         self.meet_neighbours();
-        let sight = self.estimate.update(&self.plan, &self.network, &self.measured, &self.active());
+        let sight = self.estimate.update(
+            &self.plan,
+            &self.network,
+            &self.measured,
+            &self.active(),
+            &self.tie_counts,
+        );
         let clear = sight == Sight::Clear && self.estimate.is_started();
         self.refresh_boxes();
         self.rebuilt = self.update_kinds() || moved;
@@ -217,7 +227,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         let (hard, conditional) = self.judge(clear);
         let witness = self.run_shadow();
         self.speak_verdict(clear, violation, still);
-        let total = self.write_feeders(&wish, violation);
+        let total = self.write_feeders(&wish, violation, sight);
         let found = Finding { clear, hard, conditional, witness, shedding: total > 0.01 };
         let step = self.ladder.tick(found, &settings);
         self.speak(tick, step, say);
@@ -249,9 +259,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             };
             change = if change == Change::Relearn || now == Change::None { change } else { now };
         }
-        let ties_moved = self.tie_closed != self.measured.tie_closed;
+        let ties_moved = self.follow_ties();
         let units_moved = self.unit_on != self.measured.unit_in_service;
-        self.tie_closed = self.measured.tie_closed;
         self.unit_on = self.measured.unit_in_service;
         match change {
             Change::Relearn => self.estimate.relearn(),
@@ -260,8 +269,34 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
                 self.estimate.freeze(self.plan.settings.freeze_ticks);
             }
         }
-        self.rows.choose(&self.plan, &self.network, &self.tie_closed);
+        self.rows.choose(&self.plan, &self.network, &self.tie_counts);
         true
+    }
+
+    /// Which ties are closed, and which of them count as controlled; true when that has changed.
+    ///
+    /// A tie whose other end sits on a piece that its steward lost can hold no
+    /// schedule: from then on its flow is part of the load.
+    fn follow_ties(&mut self) -> bool {
+        let (closed, counts) = (self.tie_closed, self.tie_counts);
+        self.tie_closed = self.measured.tie_closed;
+        let ticks = self.plan.settings.neighbour_ticks;
+        for (index, tie) in self.plan.ties.iter().enumerate() {
+            let closed = self.tie_closed.get(index).copied().unwrap_or(false);
+            let lost =
+                self.ends.get(index).and_then(|end| end.theirs(ticks)).map(|said| said.detached);
+            let Some(slot) = self.tie_counts.get_mut(index) else { continue };
+            let before = *slot;
+            // A silent neighbour changes nothing: what it said last stands.
+            *slot = closed && !lost.unwrap_or(!before && closed);
+            let flow = self.measured.tie_flow.get(index).copied().flatten().unwrap_or(0.0);
+            let bus = usize::from(tie.bus);
+            if closed && before != *slot && self.network.is_kept(bus) {
+                let relief = if *slot { flow } else { -flow };
+                self.network.relieve(&self.plan, &mut self.estimate.part, bus, relief);
+            }
+        }
+        closed != self.tie_closed || counts != self.tie_counts
     }
 
     /// Unit capacity at each bus, pu: which piece of a cut area is worth keeping.
@@ -300,7 +335,9 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         let asks = self.asks();
         for (index, end) in self.ends.iter_mut().enumerate().take(self.plan.ties.len()) {
             let attached = self.rows.is_attached(index);
-            end.pass(asks && attached, attached);
+            let kept =
+                self.plan.ties.get(index).is_some_and(|tie| self.network.is_kept(tie.bus.into()));
+            end.pass(asks && attached, kept);
             if let Some(open) = self.open.get_mut(index) {
                 *open = attached && end.is_open(asks, &settings);
             }

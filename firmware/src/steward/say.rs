@@ -116,7 +116,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         let (mut values, mut lines, mut ties) = ([0; PART_MAX], [0; 16], [0; 2]);
         let line_count = self.plan.lines.len();
         let closed = (0..line_count).map(|line| self.network.is_closed(line));
-        let attached = self.tie_closed.iter().copied().take(self.plan.ties.len());
+        let attached = self.tie_counts.iter().copied().take(self.plan.ties.len());
         let packed = (
             pack_floats(chunk.iter().copied(), &mut values),
             pack_bits(closed, &mut lines),

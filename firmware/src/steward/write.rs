@@ -51,7 +51,11 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         }
     }
 
-    pub(super) fn write_feeders(&mut self, wish: &[f32; X], violation: f32) -> f32 {
+    pub(super) fn write_feeders(&mut self, wish: &[f32; X], violation: f32, sight: Sight) -> f32 {
+        // Without sight what was ordered last stands, as for the units.
+        if sight == Sight::None || !self.estimate.is_started() {
+            return self.feeders.total(self.plan.feeders.len());
+        }
         let mut feeder_wish = [0.0; X];
         let wishes = wish.iter().skip(self.plan.units.len());
         for (slot, value) in feeder_wish.iter_mut().zip(wishes).take(self.plan.feeders.len()) {

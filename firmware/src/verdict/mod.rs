@@ -17,6 +17,8 @@
 //! model of floating-point sums (N. Higham, "Accuracy and Stability of Numerical
 //! Algorithms", 2002, chapter 3).
 
+pub mod candidate;
+
 use crate::law::kernel::{abs, max, max_abs, min};
 
 /// Unit round-off of `f32`, with the factor for one product and one sum.

@@ -17,7 +17,7 @@ mod fields;
 mod grid_file;
 mod marks;
 pub mod model;
-mod nearest;
+pub(crate) mod nearest;
 pub mod network;
 mod play_file;
 pub mod problems;

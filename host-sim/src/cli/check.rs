@@ -13,7 +13,7 @@ use crate::case::{Problems, builtin_grid, builtin_play, builtin_plays, read_grid
 use super::{Ending, Failure};
 
 /// Check a grid or play file; without one, the built-in example.
-#[derive(clap::Args, Debug)]
+#[derive(Clone, Debug, clap::Args)]
 #[command(after_help = "Example:\n  hedgerow check storm.play.toml")]
 pub struct Args {
     /// File to check: NAME.grid.toml or NAME.play.toml.

@@ -13,7 +13,7 @@ use super::new::{cannot_write, refuse_overwrite};
 use super::{Ending, Failure};
 
 /// Turn an IEEE Common Data Format file into a grid file.
-#[derive(clap::Args, Debug)]
+#[derive(Clone, Debug, clap::Args)]
 #[command(after_help = "Example:\n  hedgerow import case39.cdf --out case39.grid.toml")]
 pub struct Args {
     /// File in the Common Data Format of 1973.

@@ -4,6 +4,9 @@
 //! exit code. Results go to stdout, progress and problems to stderr. Colour is
 //! used only on a terminal, never with `NO_COLOR`, and never alone.
 
+pub mod check;
+pub mod import;
+pub mod new;
 mod progress;
 pub mod rehearse;
 
@@ -12,10 +15,6 @@ use std::io::{IsTerminal, Write};
 use clap::{Parser, Subcommand};
 
 use crate::report::summary::Colour;
-
-pub mod check;
-pub mod import;
-pub mod new;
 
 /// How a command that ran to its end ended.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -57,6 +56,12 @@ pub struct Cli {
 pub enum Command {
     /// Run a disturbance in closed loop, judge its end and write the report.
     Rehearse(rehearse::Args),
+    /// Read a grid or a play and say what it holds, or what is wrong with it.
+    Check(check::Args),
+    /// Turn an IEEE Common Data Format file into a grid file.
+    Import(import::Args),
+    /// Write a commented grid and play to start from.
+    New(new::Args),
 }
 
 /// Run the command that was given.
@@ -65,6 +70,9 @@ pub enum Command {
 pub fn run(cli: &Cli) -> Result<Ending, Failure> {
     match &cli.command {
         Command::Rehearse(args) => rehearse::run(args),
+        Command::Check(args) => check::run(args),
+        Command::Import(args) => import::run(args),
+        Command::New(args) => new::run(args),
     }
 }
 

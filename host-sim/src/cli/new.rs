@@ -11,7 +11,7 @@ use crate::case::starter::FILES;
 use super::{Ending, Failure};
 
 /// Write a commented grid and play to start from.
-#[derive(clap::Args, Debug)]
+#[derive(Clone, Debug, clap::Args)]
 #[command(
     after_help = "Example:\n  hedgerow new my-grid && hedgerow check my-grid/starter.play.toml"
 )]

@@ -12,9 +12,11 @@ use std::time::Instant;
 
 use clap::ValueEnum;
 
+use super::check::input_failure;
 use super::progress::Progress;
 use super::{Ending, Failure, put, stdout_colour};
 use crate::case::model::{Grid, Play};
+use crate::case::nearest::nearest;
 use crate::case::{builtin_play, builtin_plays, read_play};
 use crate::judge::{Judgement, Outcome, judge};
 use crate::record::{Recording, Scheme};
@@ -167,11 +169,13 @@ fn find(name: &str) -> Result<(Grid, Play), Failure> {
     let looks_like_path =
         path.exists() || name.ends_with(".toml") || name.contains(std::path::is_separator);
     if looks_like_path {
-        return read_play(path).map_err(|problems| Failure::Input(problems.to_string()));
+        return read_play(path).map_err(|problems| input_failure(&problems));
     }
     let known: Vec<&str> = builtin_plays().iter().map(|(name, _)| *name).collect();
+    let near = nearest(name, known.iter().copied());
+    let near = near.map_or_else(String::new, |near| format!("; did you mean `{near}`?"));
     Err(Failure::Input(format!(
-        "no built-in play and no file is called `{name}`\nbuilt-in plays: {}\na file's name ends in {PLAY_ENDING}",
+        "no built-in play and no file is called `{name}`{near}\nbuilt-in plays: {}\na file's name ends in {PLAY_ENDING}",
         known.join(", ")
     )))
 }
@@ -273,6 +277,7 @@ mod tests {
     fn parsed(line: &str) -> Args {
         match Cli::parse_from(line.split_whitespace()).command {
             super::super::Command::Rehearse(args) => args,
+            other => panic!("{other:?} is another command"),
         }
     }
 

@@ -23,12 +23,13 @@ pub(super) enum Least {
     },
 }
 
-/// Smallest worst violation in pu.
+/// Smallest worst violation in pu; infinite when what can not give (ranges, bands,
+/// schedules) leaves no point at all.
 ///
 /// Errors: the solver's sentence.
 pub(super) fn violation_pu(setting: &Setting, scope: Scope) -> Result<f64, String> {
     let (program, unknowns) = build(setting, scope, Slack::Elastic);
-    let x = program.solve()?;
+    let Some(x) = program.solve_if_feasible()? else { return Ok(f64::INFINITY) };
     Ok(unknowns.violation.map_or(0.0, |z| x[z].max(0.0)))
 }
 

@@ -78,6 +78,8 @@ pub struct Judgement {
     pub facts: Vec<Fact>,
     /// Sentences on what has no reference, and why.
     pub not_judged: Vec<String>,
+    /// By how much some limit stays broken even at the lowest rungs allowed, in MW; none when a solution exists.
+    pub beyond_mw: Option<f64>,
 }
 
 /// What the reference optimum says, where there is one.
@@ -86,6 +88,7 @@ struct Reference {
     least_rung: Option<Vec<u8>>,
     optimum_cost: Option<f64>,
     least_shed_mw: Vec<f64>,
+    beyond_mw: Option<f64>,
 }
 
 /// Judge a run by its end.
@@ -129,6 +132,7 @@ pub fn judge(grid: &Grid, play: &Play, recording: &Recording) -> Judgement {
         breaker_slack_mw: breaker_slack_mw(grid, recording, None),
         facts: found.facts,
         not_judged,
+        beyond_mw: reference.beyond_mw,
     }
 }
 
@@ -167,11 +171,13 @@ fn refer(
     let least_rung = match least::least_rungs(&setting) {
         Ok(least::Least::Rungs(rungs)) => rungs,
         Ok(least::Least::Beyond { short_mw, areas }) => {
-            not_judged.push(format!(
-                "No reference: even at the lowest rungs allowed to {} some limit stays broken by {short_mw:.2} MW.",
-                areas.join(", ")
-            ));
-            return Reference::default();
+            let who = areas.join(", ");
+            not_judged.push(if short_mw.is_finite() {
+                format!("No reference: even at the lowest rungs allowed to {who} some limit stays broken by {short_mw:.2} MW.")
+            } else {
+                format!("No reference: even at the lowest rungs allowed to {who} ranges and tie bands leave no point at all.")
+            });
+            return Reference { beyond_mw: Some(short_mw), ..Reference::default() };
         }
         Err(why) => {
             not_judged.push(format!("No reference: {why}."));

@@ -319,6 +319,10 @@ impl Builder<'_> {
         if open {
             let curve = if self.cost_counts() { 2.0 * TIE_CURVATURE } else { 0.0 };
             let mu = self.program.add(curve, 0.0);
+            // The stewards' own band: twice that of the flow.
+            let band = 2.0 * self.setting.pu(self.setting.play.steward.tie_band_mw);
+            self.program.at_most(vec![(mu, 1.0)], band);
+            self.program.at_most(vec![(mu, -1.0)], band);
             row.push((mu, -1.0));
             self.program.equal(row, base);
             self.unknowns.mid[line] = Some(mu);

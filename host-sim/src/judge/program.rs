@@ -65,6 +65,14 @@ impl Program {
     ///
     /// Errors: a sentence with the solver's status.
     pub(super) fn solve(&self) -> Result<Vec<f64>, String> {
+        self.solve_if_feasible()?
+            .ok_or_else(|| "the reference solver found no feasible point".to_owned())
+    }
+
+    /// Solve it; none when it has no feasible point.
+    ///
+    /// Errors: a sentence with the solver's status.
+    pub(super) fn solve_if_feasible(&self) -> Result<Option<Vec<f64>>, String> {
         let n = self.curve.len();
         let curvature = diagonal(&self.curve);
         let (rows, rhs) = stack(&self.equal, &self.at_most, n);
@@ -75,7 +83,8 @@ impl Program {
                 .map_err(|e| format!("the reference solver refused the problem ({e:?})"))?;
         solver.solve();
         match solver.solution.status {
-            SolverStatus::Solved | SolverStatus::AlmostSolved => Ok(solver.solution.x),
+            SolverStatus::Solved | SolverStatus::AlmostSolved => Ok(Some(solver.solution.x)),
+            SolverStatus::PrimalInfeasible | SolverStatus::AlmostPrimalInfeasible => Ok(None),
             status => Err(format!("the reference solver ended with `{status:?}`")),
         }
     }

@@ -192,7 +192,8 @@ fn pieces(grid: &Grid, end: &FinalState) -> Vec<usize> {
     labels(grid.buses.len(), inside.map(|l| (grid.lines[l].from, grid.lines[l].to)))
 }
 
-/// Piece each steward keeps: most generating capacity, then most buses, then file order.
+/// Piece each steward keeps: most generating capacity (emergency range, as the
+/// steward counts it), then most buses, then file order.
 fn main_pieces(grid: &Grid, end: &FinalState, piece: &[usize]) -> Vec<Option<usize>> {
     (0..grid.areas.len())
         .map(|a| {
@@ -201,17 +202,16 @@ fn main_pieces(grid: &Grid, end: &FinalState, piece: &[usize]) -> Vec<Option<usi
                 if grid.buses[b].area != a || piece[b] != b || end.bus_island[b].is_none() {
                     continue;
                 }
-                let capacity_mva: f64 = grid
+                let capacity_mw: f64 = grid
                     .units
                     .iter()
                     .enumerate()
                     .filter(|(u, unit)| piece[unit.bus] == b && end.unit_in_service[*u])
-                    .map(|(_, unit)| unit.rating_mva)
+                    .map(|(_, unit)| unit.emergency_max_mw.max(0.0))
                     .sum();
                 let size = piece.iter().filter(|p| **p == b).count();
-                if best.is_none_or(|(c, s, _)| capacity_mva > c || (capacity_mva == c && size > s))
-                {
-                    best = Some((capacity_mva, size, b));
+                if best.is_none_or(|(c, s, _)| capacity_mw > c || (capacity_mw == c && size > s)) {
+                    best = Some((capacity_mw, size, b));
                 }
             }
             best.map(|(_, _, label)| label)

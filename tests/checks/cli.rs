@@ -1,1 +1,0 @@
-//! (its author fills this)
