@@ -4,6 +4,7 @@
 //! of check; data in `tests/data`, helpers in `tests/src`.
 
 mod acceptance;
+mod boards;
 mod catalogue;
 mod closed39;
 mod codes;

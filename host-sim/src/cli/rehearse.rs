@@ -161,7 +161,7 @@ fn list(json: bool) -> Result<String, Failure> {
 }
 
 /// A play by built-in name or by path.
-fn find(name: &str) -> Result<(Grid, Play), Failure> {
+pub(super) fn find(name: &str) -> Result<(Grid, Play), Failure> {
     if let Some(found) = builtin_play(name) {
         return Ok(found);
     }
@@ -193,7 +193,7 @@ fn target(args: &Args, play: &Play) -> (PathBuf, Existing) {
 }
 
 /// A play's name as the name of a directory.
-fn dir_name(play: &str) -> String {
+pub(super) fn dir_name(play: &str) -> String {
     let safe: String = play
         .chars()
         .map(|c| if c.is_alphanumeric() || "-_.".contains(c) { c } else { '-' })
@@ -204,7 +204,7 @@ fn dir_name(play: &str) -> String {
     }
 }
 
-fn refused(error: ReportError) -> Failure {
+pub(super) fn refused(error: ReportError) -> Failure {
     match error {
         ReportError::Occupied(_) => Failure::Input(error.to_string()),
         ReportError::Write { .. } | ReportError::Layout { .. } => {
@@ -214,7 +214,7 @@ fn refused(error: ReportError) -> Failure {
 }
 
 /// A flag that Ctrl-C sets.
-fn stop_flag() -> Result<Arc<AtomicBool>, Failure> {
+pub(super) fn stop_flag() -> Result<Arc<AtomicBool>, Failure> {
     let flag = Arc::new(AtomicBool::new(false));
     let seen = Arc::clone(&flag);
     ctrlc::set_handler(move || seen.store(true, Ordering::Relaxed))

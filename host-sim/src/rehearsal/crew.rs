@@ -7,18 +7,16 @@
 use super::desk::{Desk, Report};
 use super::ramps::Ramps;
 use super::recorder::Recorder;
-use super::{RehearsalError, tell};
+use super::seat::{Gone, Seat, SeatCounts, Source, Staff};
+use super::{Lost, RehearsalError, tell};
 use crate::case::model::{Grid, Happening, OnSilence, Play, UnitStatus};
 use crate::charter::{Area, proof};
 use crate::link::{Counted, Direct, FAULTLESS, Faulty, Link, in_process};
 use crate::plant::Plant;
 use crate::record::{CheckedProof, FrameCounts};
-use hedgerow_firmware::node::Node;
 use hedgerow_protocol::auth::{Key, REHEARSAL_KEY};
 use hedgerow_protocol::message::{BasePoint, Message, Restore, Schedule};
 
-/// A node that holds the largest area.
-pub type HostNode = Node<64, 112, 112>;
 /// Seconds of silence after which an actuator follows its own rule.
 const SILENCE_S: f64 = 2.0;
 
@@ -27,13 +25,13 @@ type Wire = Counted<Faulty<Direct>>;
 /// Everything of one area that is not the plant.
 struct Post {
     area: Area,
-    node: Option<Box<HostNode>>,
+    seat: Option<Box<dyn Seat>>,
     desk: Desk,
     to_steward: Wire,
     from_steward: Wire,
     boots: u32,
     /// Counts of boards that died.
-    past: (u64, u64),
+    past: SeatCounts,
     silent_since: u32,
 }
 
@@ -44,13 +42,21 @@ pub struct Crew {
     /// Link from each area to each neighbour.
     between: Vec<Vec<Option<Wire>>>,
     tick_s: f64,
+    staff: Box<dyn Staff>,
+    /// Seats that were left empty by themselves.
+    pub lost: Vec<Lost>,
 }
 
 impl Crew {
     /// Boot a steward for every area with its charter.
     ///
     /// Errors: a steward refuses its charter.
-    pub fn new(grid: &Grid, play: &Play, areas: Vec<Area>) -> Result<Self, RehearsalError> {
+    pub fn new(
+        grid: &Grid,
+        play: &Play,
+        areas: Vec<Area>,
+        mut staff: Box<dyn Staff>,
+    ) -> Result<Self, RehearsalError> {
         let seed = play.run.seed;
         let plant_faults = if play.links.plant_too { &play.links } else { &FAULTLESS };
         let name = |index: usize| grid.areas[index].name.as_str();
@@ -70,17 +76,18 @@ impl Crew {
                 desk: Desk::new(&area, Key::new(&REHEARSAL_KEY)),
                 to_steward: in_process(plant_faults, seed, &format!("plant > {label}")),
                 from_steward: in_process(plant_faults, seed, &format!("{label} > plant")),
-                node: None,
+                seat: None,
                 boots: 0,
-                past: (0, 0),
+                past: SeatCounts::default(),
                 silent_since: 0,
                 area,
             };
-            post.boot().map_err(|why| RehearsalError::Refused { area: label.to_owned(), why })?;
+            post.boot(label, staff.as_mut())?;
             Ok(post)
         });
         let posts = posts.collect::<Result<Vec<_>, RehearsalError>>()?;
-        Ok(Self { grid: grid.clone(), posts, between, tick_s: play.run.tick_s })
+        let (grid, tick_s) = (grid.clone(), play.run.tick_s);
+        Ok(Self { grid, posts, between, tick_s, staff, lost: Vec::new() })
     }
 
     /// The areas with their places.
@@ -95,16 +102,13 @@ impl Crew {
 
     /// Whether an area's board is alive.
     pub fn is_alive(&self, area: usize) -> bool {
-        self.posts[area].node.is_some()
+        self.posts[area].seat.is_some()
     }
 
     /// Frames of an area so far.
     pub fn frames(&self, area: usize) -> FrameCounts {
         let post = &self.posts[area];
-        let own = post.node.as_ref().map_or((0, 0), |node| {
-            let counts = node.counts();
-            (u64::from(counts.sent), u64::from(counts.refused))
-        });
+        let own = post.seat.as_ref().map_or(SeatCounts::default(), |seat| seat.counts());
         let mut lost = post.to_steward.tally().lost + post.from_steward.tally().lost;
         for link in self.between[area].iter().flatten() {
             lost += link.tally().lost;
@@ -112,7 +116,11 @@ impl Crew {
         for links in &self.between {
             lost += links[area].as_ref().map_or(0, |link| link.tally().lost);
         }
-        FrameCounts { sent: post.past.0 + own.0, lost, refused: post.past.1 + own.1 }
+        FrameCounts {
+            sent: post.past.sent + own.sent,
+            lost,
+            refused: post.past.refused + own.refused,
+        }
     }
 
     /// Pass an order of the operator on, or let a board die or return.
@@ -150,9 +158,12 @@ impl Crew {
             }
             Happening::StewardDies { area } => self.posts[area].die(),
             Happening::StewardReturns { area } => {
-                self.posts[area].die();
-                // The charter was accepted at the first boot; the same bytes are accepted again.
-                let _accepted = self.posts[area].boot();
+                let post = &mut self.posts[area];
+                post.die();
+                // A board that does not come back leaves its seat empty.
+                if let Err(why) = post.boot(&self.grid.areas[area].name, self.staff.as_mut()) {
+                    self.lost.push(Lost { area, tick, why: why.to_string() });
+                }
             }
             Happening::LinkOutage { areas: (a, b), for_s } => {
                 let span = tick..tick + ramp_ticks(for_s);
@@ -179,33 +190,42 @@ impl Crew {
             post.to_steward.send(tick, wire);
         }
         self.deliver(tick);
-        self.act(tick);
+        self.act(tick, recorder);
         self.collect(tick, plant, recorder);
         self.mind_silence(tick, plant, ramps);
     }
 
     fn deliver(&mut self, tick: u32) {
         for (index, post) in self.posts.iter_mut().enumerate() {
-            let Post { node, to_steward, .. } = post;
-            let mut hand = |bytes: &[u8]| {
-                if let Some(node) = node {
-                    node.receive(bytes);
+            let Post { seat, to_steward, .. } = post;
+            let mut hand = |source: Source, bytes: &[u8]| {
+                if let Some(seat) = seat {
+                    seat.hear(source, bytes);
                 }
             };
-            to_steward.receive(tick, &mut hand);
+            to_steward.receive(tick, &mut |bytes| hand(Source::Plant, bytes));
             for links in &mut self.between {
                 if let Some(link) = &mut links[index] {
-                    link.receive(tick, &mut hand);
+                    link.receive(tick, &mut |bytes| hand(Source::Neighbour, bytes));
                 }
             }
         }
     }
 
-    fn act(&mut self, tick: u32) {
-        for (post, links) in self.posts.iter_mut().zip(&mut self.between) {
-            let Post { node, from_steward, .. } = post;
-            let Some(node) = node else { continue };
-            node.tick(tick, &mut |to, bytes| match usize::from(to).checked_sub(1) {
+    fn act(&mut self, tick: u32, recorder: &mut Recorder) {
+        let mut gone: Vec<(usize, Gone)> = Vec::new();
+        for (index, post) in self.posts.iter_mut().enumerate() {
+            if let Some(Err(why)) = post.seat.as_mut().map(|seat| seat.begin(tick)) {
+                gone.push((index, why));
+            }
+        }
+        for (index, (post, links)) in self.posts.iter_mut().zip(&mut self.between).enumerate() {
+            let Post { seat, from_steward, .. } = post;
+            let Some(seat) = seat.as_mut().filter(|_| gone.iter().all(|(at, _)| *at != index))
+            else {
+                continue;
+            };
+            let done = seat.finish(tick, &mut |to, bytes| match usize::from(to).checked_sub(1) {
                 None => from_steward.send(tick, bytes),
                 Some(area) => {
                     if let Some(link) = links.get_mut(area).and_then(Option::as_mut) {
@@ -213,6 +233,16 @@ impl Crew {
                     }
                 }
             });
+            if let Err(why) = done {
+                gone.push((index, why));
+            }
+        }
+        for (area, Gone(why)) in gone {
+            self.posts[area].die();
+            let name = &self.grid.areas[area].name;
+            recorder
+                .tell(f64::from(tick) * self.tick_s, format!("the board of {name} is gone: {why}"));
+            self.lost.push(Lost { area, tick, why });
         }
     }
 
@@ -266,19 +296,17 @@ impl Crew {
 
 impl Post {
     /// Start a fresh board with the area's charter.
-    fn boot(&mut self) -> Result<(), hedgerow_protocol::message::Refusal> {
+    fn boot(&mut self, name: &str, staff: &mut dyn Staff) -> Result<(), RehearsalError> {
         self.boots += 1;
-        let mut node = Box::new(HostNode::new(Key::new(&REHEARSAL_KEY), self.boots));
-        node.load(&self.area.bytes)?;
-        self.node = Some(node);
+        self.seat = Some(staff.seat(&self.area, name, self.boots)?);
         Ok(())
     }
 
     fn die(&mut self) {
-        if let Some(node) = self.node.take() {
-            let counts = node.counts();
-            self.past.0 += u64::from(counts.sent);
-            self.past.1 += u64::from(counts.refused);
+        if let Some(seat) = self.seat.take() {
+            let counts = seat.counts();
+            self.past.sent += counts.sent;
+            self.past.refused += counts.refused;
         }
     }
 

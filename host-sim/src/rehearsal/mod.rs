@@ -14,6 +14,7 @@ mod crew;
 mod desk;
 mod ramps;
 mod recorder;
+mod seat;
 mod tell;
 
 use crate::case::model::{Event, Grid, Happening, Play, UnitStatus};
@@ -27,7 +28,7 @@ use recorder::Recorder;
 use thiserror::Error;
 
 pub use balance::{GAINS_TRIED_PER_S, TUNED_GAIN_PER_S, TUNING_PLAYS, tune};
-pub use crew::HostNode;
+pub use seat::{Gone, HostNode, InProcess, Seat, SeatCounts, Source, Staff};
 
 /// Why a rehearsal could not run.
 #[derive(Debug, Error)]
@@ -46,6 +47,34 @@ pub enum RehearsalError {
         /// Its reason.
         why: hedgerow_protocol::message::Refusal,
     },
+    /// The seat of an area could not be filled.
+    #[error("{area}: {why}")]
+    Seat {
+        /// Name of the area.
+        area: String,
+        /// Why not.
+        why: Box<dyn std::error::Error + Send + Sync>,
+    },
+}
+
+/// A seat that was left empty in mid-run, though no event of the play says so.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Lost {
+    /// Index of the area.
+    pub area: usize,
+    /// Tick at which it was missed.
+    pub tick: u32,
+    /// Why, in words.
+    pub why: String,
+}
+
+/// A run whose seats may have been boards.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Attended {
+    /// The record.
+    pub recording: Recording,
+    /// Seats that were left empty.
+    pub lost: Vec<Lost>,
 }
 
 /// Run a play on a grid under a scheme.
@@ -73,15 +102,21 @@ pub fn rehearse_with_gain(
     gain_per_s: f64,
     watch: &mut dyn FnMut(f64) -> bool,
 ) -> Result<Recording, RehearsalError> {
-    let mut run = Loop::new(grid, play, scheme, gain_per_s)?;
-    let ticks = (play.run.duration_s / play.run.tick_s).round() as u32;
-    for tick in 0..ticks {
-        run.tick(tick);
-        if !watch(f64::from(tick + 1) / f64::from(ticks)) {
-            return Ok(run.finish(true));
-        }
-    }
-    Ok(run.finish(false))
+    Ok(Loop::new(grid, play, scheme, gain_per_s, Box::new(InProcess))?.run(watch).recording)
+}
+
+/// Run a play under stewards that sit where `staff` puts them.
+///
+/// The loop is that of [`rehearse`]; a seat that is lost stays empty, and its
+/// area goes on by the rules of a steward that has died.
+/// Errors: [`RehearsalError`], before the first tick.
+pub fn attend(
+    grid: &Grid,
+    play: &Play,
+    staff: Box<dyn Staff>,
+    watch: &mut dyn FnMut(f64) -> bool,
+) -> Result<Attended, RehearsalError> {
+    Ok(Loop::new(grid, play, Scheme::Steward, TUNED_GAIN_PER_S, staff)?.run(watch))
 }
 
 /// Who sets the set-points.
@@ -107,12 +142,14 @@ impl<'g> Loop<'g> {
         play: &'g Play,
         scheme: Scheme,
         gain_per_s: f64,
+        staff: Box<dyn Staff>,
     ) -> Result<Self, RehearsalError> {
         let plant = Plant::new(grid, play.run.plant_step_s)?;
         let schedules = schedules_mw(grid)?;
         let helm = match scheme {
             Scheme::Steward => {
-                Helm::Stewards(Box::new(Crew::new(grid, play, compile(grid, play)?)?))
+                let areas = compile(grid, play)?;
+                Helm::Stewards(Box::new(Crew::new(grid, play, areas, staff)?))
             }
             Scheme::Droop | Scheme::AreaControlError => {
                 Helm::Baseline(Balance::new(grid, scheme, gain_per_s))
@@ -127,6 +164,17 @@ impl<'g> Loop<'g> {
         }
         let steps = (play.run.tick_s / play.run.plant_step_s).round().max(1.0) as u32;
         Ok(Self { grid, play, plant, helm, ramps, recorder, next_event: 0, steps_per_tick: steps })
+    }
+
+    fn run(mut self, watch: &mut dyn FnMut(f64) -> bool) -> Attended {
+        let ticks = (self.play.run.duration_s / self.play.run.tick_s).round() as u32;
+        for tick in 0..ticks {
+            self.tick(tick);
+            if !watch(f64::from(tick + 1) / f64::from(ticks)) {
+                return self.finish(true);
+            }
+        }
+        self.finish(false)
     }
 
     fn tick(&mut self, tick: u32) {
@@ -194,11 +242,16 @@ impl<'g> Loop<'g> {
         }
     }
 
-    fn finish(self, stopped: bool) -> Recording {
+    fn finish(mut self, stopped: bool) -> Attended {
+        let lost = match &mut self.helm {
+            Helm::Stewards(crew) => std::mem::take(&mut crew.lost),
+            Helm::Baseline(_) => Vec::new(),
+        };
         let crew = match &self.helm {
             Helm::Stewards(crew) => Some(crew.as_ref()),
             Helm::Baseline(_) => None,
         };
-        self.recorder.finish(self.grid, &self.plant, &self.ramps, crew, stopped)
+        let recording = self.recorder.finish(self.grid, &self.plant, &self.ramps, crew, stopped);
+        Attended { recording, lost }
     }
 }
