@@ -31,6 +31,21 @@ const PRICE_MAX: f32 = 1e4;
 /// Low-pass gain of a neighbour's deviation per tick (2 s at a 100 ms tick).
 const TREND_GAIN: f32 = 0.05;
 
+/// Stands for the other end's terms before it has spoken.
+const NOTHING_SAID: TieTerms = TieTerms {
+    tie: 0,
+    tick: 0,
+    round: 0,
+    ready: false,
+    bid: [0.0; 2],
+    bid_before: [0.0; 2],
+    deviation: [0.0; 2],
+    open: false,
+    detached: false,
+    distance: 0,
+    rung: Rung::Keep,
+};
+
 /// One end's state of one tie.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct TieEnd {
@@ -41,7 +56,8 @@ pub struct TieEnd {
     round: u16,
     ready: bool,
     round_ticks: u16,
-    theirs: Option<TieTerms>,
+    heard: bool,
+    theirs: TieTerms,
     silent_ticks: u16,
     asked_ticks: u16,
     trend: f32,
@@ -59,7 +75,8 @@ impl TieEnd {
             round: 0,
             ready: false,
             round_ticks: 0,
-            theirs: None,
+            heard: false,
+            theirs: NOTHING_SAID,
             silent_ticks: u16::MAX,
             asked_ticks: 0,
             trend: 0.0,
@@ -89,7 +106,7 @@ impl TieEnd {
 
     /// What the other end last said, if it spoke within `ticks`.
     pub fn theirs(&self, ticks: u16) -> Option<&TieTerms> {
-        self.theirs.as_ref().filter(|_| self.silent_ticks <= ticks)
+        (self.heard && self.silent_ticks <= ticks).then_some(&self.theirs)
     }
 
     /// Low-passed deviation of the other end, along the line, pu.
@@ -104,11 +121,10 @@ impl TieEnd {
         if !is_sane(terms, settings) {
             return false;
         }
-        let newer = self.theirs.as_ref().is_none_or(|old| {
-            self.silent_ticks == u16::MAX || (terms.tick.wrapping_sub(old.tick) as i32) > 0
-        });
-        if newer {
-            self.theirs = Some(*terms);
+        let later = (terms.tick.wrapping_sub(self.theirs.tick) as i32) > 0;
+        if !self.heard || self.silent_ticks == u16::MAX || later {
+            self.heard = true;
+            self.theirs = *terms;
             self.silent_ticks = 0;
             self.advance(terms, settings);
         }
@@ -144,8 +160,8 @@ impl TieEnd {
         self.silent_ticks = self.silent_ticks.saturating_add(1);
         self.asked_ticks = if asks { self.asked_ticks.saturating_add(1) } else { 0 };
         self.controllable = controllable;
-        if let Some(theirs) = &self.theirs {
-            let [flow, _] = theirs.deviation;
+        if self.heard {
+            let [flow, _] = self.theirs.deviation;
             self.trend += TREND_GAIN * (flow - self.trend);
         }
     }

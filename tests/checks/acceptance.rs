@@ -95,7 +95,7 @@ impl Case {
         let mut scaled = Scaled::new();
         for (i, row) in self.a.chunks(self.lo.len()).enumerate() {
             for (j, &value) in row.iter().enumerate() {
-                scaled.matrix_mut()[(i, j)] = value as f32;
+                scaled.matrix_mut().put(i, j, value as f32);
             }
         }
         let columns: Vec<Column> = (0..self.lo.len()).map(|j| self.kind(j)).collect();

@@ -13,7 +13,7 @@ use hedgerow::bench::image::Images;
 use hedgerow::bench::logbook::{Direction, Logbook, read};
 use hedgerow::bench::node::{Core, LinkKind, NodeKind};
 use hedgerow::bench::{Benched, Setup, bench};
-use hedgerow::case::model::{Grid, Play};
+use hedgerow::case::model::{Event, Grid, Happening, Play};
 use hedgerow::case::{builtin_play, builtin_plays};
 use hedgerow::cli::{self, Cli, Ending, Failure};
 use hedgerow::record::Scheme;
@@ -127,11 +127,15 @@ fn the_uart_link_carries_a_play_without_a_wrong_byte() {
 fn a_bench_leaves_the_same_record_as_a_rehearsal() {
     let _turn = turn();
     let (grid, mut short) = builtin_play("silent-neighbour").unwrap();
-    // Long enough for a board to die, and for a new one to take over.
-    short.run.duration_s = 160.0;
+    short.run.duration_s = 60.0;
+    // The play lets a board die; here a new one takes over too.
+    short.events.push(Event { at_s: 40.0, what: Happening::StewardReturns { area: 1 } });
+    let died = Event { at_s: 20.0, what: Happening::StewardDies { area: 1 } };
+    short.events.insert(0, died);
+    short.events.sort_by(|a, b| a.at_s.total_cmp(&b.at_s));
     let case = (grid, short);
     let done = benched(&case, &setup(&case.0, Core::M4, LinkKind::Fifo, false));
-    assert!(done.boards.iter().any(|board| board.boots == 2));
+    assert!(done.boards.iter().any(|board| board.area == 1 && board.boots == 2));
     let mut rehearsed = rehearse(&case.0, &case.1, Scheme::Steward, &mut |_| true).unwrap();
     rehearsed.frames = done.attended.recording.frames.clone();
     assert_eq!(done.attended.recording, rehearsed);
@@ -155,7 +159,8 @@ fn three_m4f_boards_run_at_least_eight_times_faster_than_real_time() {
 #[ignore = "needs the emulator: run tests/run"]
 fn m4f_ticks_without_a_rebuild_cost_the_same_instructions() {
     let _turn = turn();
-    let case = play("quillon", 60.0);
+    // Down to the lowest rung, with proofs and rebuilds on the way.
+    let case = play("shed", 100.0);
     let done = benched(&case, &setup(&case.0, Core::M4, LinkKind::Fifo, true));
     for board in &done.boards {
         let name = &case.0.areas[board.area].name;

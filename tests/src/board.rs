@@ -34,7 +34,7 @@ impl Board {
         let mut scaled = Box::new(Scaled::new());
         for (i, row) in programme.a.iter().enumerate() {
             for (j, &value) in row.iter().enumerate() {
-                scaled.matrix_mut().data.0[j][i] = value as f32 * factors[i];
+                scaled.matrix_mut().put(i, j, value as f32 * factors[i]);
             }
         }
         let mut board = Self {

@@ -4,7 +4,7 @@
 //! ranges and the duals inside the clamp, whatever the numbers were, so nothing
 //! winds up. Warm start: the state is kept from tick to tick.
 
-use super::kernel::{clip, mat_vec, max, soft, sqrt};
+use super::kernel::{clip, max, soft, sqrt};
 use super::limits::Limits;
 use super::scale::Scaled;
 
@@ -88,14 +88,8 @@ impl<const R: usize> Stride<R> {
 
     /// The step from `v`, where the rows stand at `ax`; `safe` is always allowed.
     fn next(&mut self, v: &[f32; R], ax: &[f32; R], rows: usize, safe: f32) -> f32 {
-        let (mut bend, mut way) = (0.0, 0.0);
-        let before = self.v.iter_mut().zip(&mut self.ax);
-        for ((last_v, last_ax), (&v, &ax)) in before.zip(v.iter().zip(ax)).take(rows) {
-            let moved = v - *last_v;
-            bend -= moved * (ax - *last_ax);
-            way += moved * moved;
-            (*last_v, *last_ax) = (v, ax);
-        }
+        let last = (head_mut(&mut self.v, rows), head_mut(&mut self.ax, rows));
+        let (bend, way) = bend_of(last, head(v, rows), head(ax, rows));
         let met = if way > 0.0 { bend / way } else { 0.0 };
         let most = 1.0 / safe;
         let wish = max(CURVATURE_KEEP * self.curvature, CURVATURE_MARGIN * met);
@@ -166,51 +160,52 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
         clamp: f32,
         count: u16,
     ) {
+        const { assert!(X.is_multiple_of(2), "unknowns go in pairs") };
+        let (rows, cols) = (scaled.rows, scaled.cols);
+        // Rounded up to whole pairs: what is beyond is closed and stays so.
+        let pairs = cols.next_multiple_of(2).min(X);
+        let unknowns = Unknowns {
+            low: head(&limits.low, pairs),
+            high: head(&limits.high, pairs),
+            pull: head(&limits.pull, pairs),
+            weight: head(&limits.weight, pairs),
+        };
+        let ends = Ends { low: head(&limits.row_low, rows), high: head(&limits.row_high, rows) };
+        let mut next = [Fine::ZERO; R];
         for _ in 0..count {
-            self.minimise(scaled, limits);
-            self.ascend(scaled, limits, sigma, clamp);
+            // The unknowns that minimise the Lagrangian at v.
+            scaled.a.transposed_times(&self.v, rows, cols, &mut self.x);
+            minimise(head_mut(&mut self.x, pairs), &unknowns);
+            scaled.a.times(&self.x, rows, cols, &mut self.ax);
+            self.ascend(rows, &ends, sigma, clamp, &mut next);
         }
-    }
-
-    /// The unknowns that minimise the Lagrangian at `v`.
-    fn minimise(&mut self, scaled: &Scaled<X, R>, limits: &Limits<X, R>) {
-        mat_vec(&scaled.at, &self.v, scaled.cols, scaled.rows, &mut self.x);
-        let ranges = limits.low.iter().zip(&limits.high);
-        let prices = limits.pull.iter().zip(&limits.weight);
-        for ((x, (&low, &high)), (&pull, &weight)) in
-            self.x.iter_mut().zip(ranges).zip(prices).take(scaled.cols)
-        {
-            *x = clip(soft(pull - *x, weight), low, high);
-        }
-        mat_vec(&scaled.a, &self.x, scaled.rows, scaled.cols, &mut self.ax);
     }
 
     /// Projected ascent on the duals, with momentum and restart.
-    fn ascend(&mut self, scaled: &Scaled<X, R>, limits: &Limits<X, R>, sigma: f32, clamp: f32) {
-        let sigma = self.stride.next(&self.v, &self.ax, scaled.rows, sigma);
-        let mut next = [Fine::ZERO; R];
-        let mut turn = 0.0;
-        let rows = self.ax.iter().zip(limits.row_low.iter().zip(&limits.row_high));
-        let duals = self.v.iter().zip(&self.v_rest).zip(self.y.iter().zip(&self.y_rest));
-        for (((&ax, (&low, &high)), ((&v, &v_rest), (&y, &y_rest))), next) in
-            rows.zip(duals).zip(&mut next).take(scaled.rows)
-        {
-            let (v, y) = (Fine { head: v, rest: v_rest }, Fine { head: y, rest: y_rest });
-            *next = moved(v, sigma * (ax - low), sigma * (ax - high), clamp);
-            turn += v.minus(*next) * next.minus(y);
-        }
+    fn ascend(
+        &mut self,
+        rows: usize,
+        ends: &Ends<'_>,
+        sigma: f32,
+        clamp: f32,
+        next: &mut [Fine; R],
+    ) {
+        let sigma = self.stride.next(&self.v, &self.ax, rows, sigma);
+        let next = next.get_mut(..rows).unwrap_or_default();
+        let v = Split { head: head(&self.v, rows), rest: head(&self.v_rest, rows) };
+        let y = Split { head: head(&self.y, rows), rest: head(&self.y_rest, rows) };
+        let turn = climb(next, head(&self.ax, rows), (&v, &y), ends, (sigma, clamp));
         let steps = f32::from(self.momentum);
         let beta = if turn > 0.0 { 0.0 } else { steps / (steps + 3.0) };
         let more = self.momentum.saturating_add(1);
         // Half the momentum comes back at once: the path seldom turns by much.
         self.momentum = if turn > 0.0 { self.momentum / 2 } else { more };
-        let duals = self.v.iter_mut().zip(&mut self.v_rest);
-        let duals = duals.zip(self.y.iter_mut().zip(&mut self.y_rest));
-        for (((v, v_rest), (y, y_rest)), next) in duals.zip(&next).take(scaled.rows) {
-            let ahead = next.plus(beta * next.minus(Fine { head: *y, rest: *y_rest }));
-            (*v, *v_rest) = (ahead.head, ahead.rest);
-            (*y, *y_rest) = (next.head, next.rest);
-        }
+        carry_on(
+            next,
+            (head_mut(&mut self.v, rows), head_mut(&mut self.v_rest, rows)),
+            (head_mut(&mut self.y, rows), head_mut(&mut self.y_rest, rows)),
+            beta,
+        );
     }
 
     /// Physical value of unknown `j`, inside `[low, high]` exactly.
@@ -230,26 +225,133 @@ impl<const X: usize, const R: usize> Iterate<X, R> {
     }
 }
 
+/// Prices and ranges of the unknowns, scaled.
+struct Unknowns<'a> {
+    low: &'a [f32],
+    high: &'a [f32],
+    pull: &'a [f32],
+    weight: &'a [f32],
+}
+
+/// Limits of the rows, scaled.
+struct Ends<'a> {
+    low: &'a [f32],
+    high: &'a [f32],
+}
+
+/// Duals in two parts.
+struct Split<'a> {
+    head: &'a [f32],
+    rest: &'a [f32],
+}
+
+// The loops below are not generic and not inlined, so that they are made once,
+// in this crate, at its level of optimisation.
+
+/// From `A' v` in `x` to the unknowns.
+#[inline(never)]
+fn minimise(x: &mut [f32], unknowns: &Unknowns<'_>) {
+    let one = |x: &mut f32, (low, high): (f32, f32), pull: f32, weight: f32| {
+        let wish = pull - *x;
+        // Most unknowns have no such price, and their number does not change from tick to tick.
+        let wish = if weight.to_bits() == 0 { wish } else { soft(wish, weight) };
+        *x = clip(wish, low, high);
+    };
+    let (x, pull) = (x.as_chunks_mut::<2>().0, unknowns.pull.as_chunks::<2>().0);
+    let (low, high) = (unknowns.low.as_chunks::<2>().0, unknowns.high.as_chunks::<2>().0);
+    let prices = pull.iter().zip(unknowns.weight.as_chunks::<2>().0);
+    for (((x, low), high), (pull, weight)) in x.iter_mut().zip(low).zip(high).zip(prices) {
+        let ([x0, x1], &[l0, l1], &[h0, h1]) = (x, low, high);
+        let (&[p0, p1], &[w0, w1]) = (pull, weight);
+        one(x0, (l0, h0), p0, w0);
+        one(x1, (l1, h1), p1, w1);
+    }
+}
+
+/// How much the gradient turned along the last move of `v`, and the square of the move.
+#[inline(never)]
+fn bend_of((last_v, last_ax): (&mut [f32], &mut [f32]), v: &[f32], ax: &[f32]) -> (f32, f32) {
+    let (mut bend, mut way) = (0.0, 0.0);
+    for ((last_v, last_ax), (&v, &ax)) in last_v.iter_mut().zip(last_ax).zip(v.iter().zip(ax)) {
+        let moved = v - *last_v;
+        bend -= moved * (ax - *last_ax);
+        way += moved * moved;
+        (*last_v, *last_ax) = (v, ax);
+    }
+    (bend, way)
+}
+
+/// The next duals; returns how far they turn against the momentum.
+#[inline(never)]
+fn climb(
+    next: &mut [Fine],
+    ax: &[f32],
+    (v, y): (&Split<'_>, &Split<'_>),
+    ends: &Ends<'_>,
+    (sigma, clamp): (f32, f32),
+) -> f32 {
+    let mut turn = 0.0;
+    let rows = ax.iter().zip(ends.low.iter().zip(ends.high));
+    let duals = v.head.iter().zip(v.rest).zip(y.head.iter().zip(y.rest));
+    for ((next, (&ax, (&low, &high))), ((v, v_rest), (y, y_rest))) in
+        next.iter_mut().zip(rows).zip(duals)
+    {
+        // A row at rest inside its limits stays there: most rows, most of the time.
+        if v.to_bits() == 0 && ax >= low && ax <= high {
+            *next = Fine::ZERO;
+            continue;
+        }
+        let (v, y) = (Fine { head: *v, rest: *v_rest }, Fine { head: *y, rest: *y_rest });
+        *next = moved(v, sigma * (ax - low), sigma * (ax - high), clamp);
+        turn += v.minus(*next) * next.minus(y);
+    }
+    turn
+}
+
 /// A dual moved by its row: up while the row is above its high limit, down while
 /// below its low one, to zero between; inside the clamp, and a number.
 #[inline(always)]
 fn moved(v: Fine, to_low: f32, to_high: f32, clamp: f32) -> Fine {
-    let (down, up) = (v.plus(to_low), v.plus(to_high));
+    let up = v.plus(to_high);
     let next = if up.head > 0.0 {
         up
-    } else if down.head < 0.0 {
-        down
     } else {
-        Fine::ZERO
+        let down = v.plus(to_low);
+        if down.head < 0.0 { down } else { Fine::ZERO }
     };
     let head = clip(next.head, -clamp, clamp);
     if head == next.head { next } else { Fine { head, rest: 0.0 } }
 }
 
-impl<const X: usize, const R: usize> Default for Iterate<X, R> {
-    fn default() -> Self {
-        Self::new()
+/// `v` = `next` carried on by the momentum; `y` = `next`.
+#[inline(never)]
+fn carry_on(
+    next: &[Fine],
+    (v, v_rest): (&mut [f32], &mut [f32]),
+    (y, y_rest): (&mut [f32], &mut [f32]),
+    beta: f32,
+) {
+    let duals = v.iter_mut().zip(v_rest).zip(y.iter_mut().zip(y_rest));
+    for (((v, v_rest), (y, y_rest)), next) in duals.zip(next) {
+        // Where a head is zero its rest is too.
+        if next.head.to_bits() == 0 && y.to_bits() == 0 {
+            (*v, *v_rest) = (0.0, 0.0);
+            continue;
+        }
+        let ahead = next.plus(beta * next.minus(Fine { head: *y, rest: *y_rest }));
+        (*v, *v_rest) = (ahead.head, ahead.rest);
+        (*y, *y_rest) = (next.head, next.rest);
     }
+}
+
+/// The first `count` values, or as many as there are.
+fn head(values: &[f32], count: usize) -> &[f32] {
+    values.get(..count).unwrap_or(values)
+}
+
+fn head_mut(values: &mut [f32], count: usize) -> &mut [f32] {
+    let count = count.min(values.len());
+    values.get_mut(..count).unwrap_or_default()
 }
 
 #[cfg(test)]

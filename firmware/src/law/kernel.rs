@@ -32,7 +32,7 @@ pub fn clip(x: f32, low: f32, high: f32) -> f32 {
 /// Magnitude.
 #[inline(always)]
 pub fn abs(x: f32) -> f32 {
-    if x < 0.0 { -x } else { x }
+    x.abs()
 }
 
 /// `x` moved towards zero by `by`, not beyond it.

@@ -9,7 +9,7 @@
 //!
 //! | code | symbol | meaning | shape | unit |
 //! |---|---|---|---|---|
-//! | `a`, `at` | A^, A^' | scaled matrix and its transpose | rows x cols | - |
+//! | `a` | A^ | scaled matrix | rows x cols | - |
 //! | `s` | s | square root of the curvature of each unknown | cols | - |
 //! | `e` | e | factor of each row | rows | - |
 //! | `t` | T | orthonormalisation of the equality rows | eqs x eqs | - |
@@ -22,6 +22,7 @@
 //! restart, B. O'Donoghue and E. Candes, "Adaptive restart for accelerated
 //! gradient schemes", 2015.
 
+pub mod blocks;
 pub mod iterate;
 pub mod kernel;
 pub mod limits;

@@ -133,6 +133,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         self.open = [false; TIES_MAX];
         self.distance = NOBODY;
         self.kinds = [Column::Closed; X];
+        self.problem = Problem::new();
+        self.limits = Limits::new();
         self.main = Iterate::new();
         self.shadow = Iterate::new();
         self.feeders = Feeders::new();

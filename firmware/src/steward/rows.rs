@@ -13,13 +13,13 @@
 //! angle rows into pu power. The mid-tie angle relative to the first meshed tie
 //! replaces a common angle reference, so only local data are needed.
 
+use crate::law::blocks::Blocks;
 use crate::law::kernel::{abs, at, put};
 use crate::law::limits::Problem;
 use crate::network::{LoadPart, Network};
 use crate::plan::Plan;
 use heapless::Vec;
 use hedgerow_protocol::limits::TIES_MAX;
-use nalgebra::SMatrix;
 
 /// Which ties take part, and how the angle rows pair them.
 #[derive(Clone, Debug)]
@@ -160,16 +160,12 @@ impl Rows {
         &self,
         plan: &Plan<B, X, R>,
         network: &Network<B, R>,
-        matrix: &mut SMatrix<f32, R, X>,
+        matrix: &mut Blocks<X, R>,
     ) {
         let mut weights = [0.0; B];
         for row in 0..plan.rows().min(R) {
             self.weights(plan, network, row, &mut weights);
-            let mut set = |col: usize, value: f32| {
-                if let Some(column) = matrix.data.0.get_mut(col) {
-                    put(column, row, value);
-                }
-            };
+            let mut set = |col: usize, value: f32| matrix.put(row, col, value);
             for actuator in 0..plan.actuators() {
                 let bus = plan.actuator_bus(actuator).unwrap_or(B);
                 set(actuator, at(&weights, bus));

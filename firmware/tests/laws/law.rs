@@ -100,7 +100,7 @@ impl Case {
         self.scaled.physical_dual(self.iterate.dual(), &mut dual);
         for (i, row) in self.a.iter().enumerate() {
             for (j, &value) in row.iter().enumerate() {
-                self.scaled.matrix_mut()[(i, j)] = value as f32;
+                self.scaled.matrix_mut().put(i, j, value as f32);
             }
         }
         let kinds: Vec<Column> = (0..self.cols())

@@ -53,7 +53,7 @@ struct FakeBoard<const B: usize> {
     wire: Wire,
     out: File,
     key: Key,
-    node: Node<B, 104, 112>,
+    node: Node<B, 112, 112>,
     fault: Fault,
 }
 

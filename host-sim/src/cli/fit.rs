@@ -2,7 +2,8 @@
 //!
 //! Contract: without arguments it measures the built-in grid on all cores. A
 //! missing emulator or target is exit 3 with the two commands that install
-//! them; an area that does not fit a chip is exit 1.
+//! them. Exit 1 says that a core that was asked for does not do, or, where none
+//! was named, that no core does.
 
 use std::path::{Path, PathBuf};
 use std::sync::atomic::Ordering;
@@ -101,7 +102,7 @@ pub fn run(args: &Args) -> Result<Ending, Failure> {
         true => show::json(&found),
         false => format!("{}written to {}\n", show::text(&found), dir.display()),
     })?;
-    Ok(match (stop.load(Ordering::Relaxed), fits(&found)) {
+    Ok(match (stop.load(Ordering::Relaxed), fits(&found, !args.cores.is_empty())) {
         (true, _) => Ending::Interrupted,
         (false, true) => Ending::Kept,
         (false, false) => Ending::Broken,
@@ -119,13 +120,11 @@ fn read(path: Option<&Path>) -> Result<Grid, Failure> {
     }
 }
 
-/// Whether everything was measured and no tick or link is too short.
-fn fits(found: &Fit) -> bool {
-    let within = |share: Option<f64>| share.is_none_or(|share| share <= 1.0);
-    found.cores.iter().all(|core| {
-        core.not_measured.is_none()
-            && core.areas.iter().all(|area| within(area.tick_share) && within(area.link_share))
-    })
+/// Whether every core that was named does, or one of all that were not.
+fn fits(found: &Fit, named: bool) -> bool {
+    let measured = found.cores.iter().all(|core| core.not_measured.is_none());
+    let mut cores = found.cores.iter();
+    measured && if named { cores.all(|core| core.fits()) } else { cores.any(|core| core.fits()) }
 }
 
 fn write(dir: &Path, found: &Fit) -> Result<(), Failure> {

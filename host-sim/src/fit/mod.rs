@@ -117,6 +117,13 @@ pub struct AreaFit {
     pub link_share: Option<f64>,
 }
 
+impl AreaFit {
+    /// Whether neither the tick nor the link is too short; none if that was not measured.
+    pub fn fits(&self) -> Option<bool> {
+        Some(self.tick_share? <= 1.0 && self.link_share? <= 1.0)
+    }
+}
+
 /// One core.
 #[derive(Clone, Debug, PartialEq, Serialize)]
 pub struct CoreFit {
@@ -136,6 +143,13 @@ pub struct CoreFit {
     pub largest: Option<Largest>,
     /// Why something is not measured.
     pub not_measured: Option<String>,
+}
+
+impl CoreFit {
+    /// Whether every area was measured and fits.
+    pub fn fits(&self) -> bool {
+        self.not_measured.is_none() && self.areas.iter().all(|area| area.fits() == Some(true))
+    }
 }
 
 /// The whole table.

@@ -53,7 +53,12 @@ pub fn assumptions(fit: &Fit) -> Vec<String> {
 }
 
 fn write_core(out: &mut String, fit: &Fit, core: &CoreFit) {
-    let _ = writeln!(out, "\n{} at {} MHz", core.name, core.mhz);
+    let verdict = match (core.fits(), &core.not_measured) {
+        (true, _) => "every area fits its tick and link",
+        (false, None) => "NOT every area fits its tick and link",
+        (false, Some(_)) => NOT_MEASURED,
+    };
+    let _ = writeln!(out, "\n{} at {} MHz: {verdict}", core.name, core.mhz);
     match &core.image {
         None => {
             let _ = writeln!(out, "  image         {NOT_MEASURED}");

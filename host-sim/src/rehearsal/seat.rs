@@ -11,7 +11,7 @@ use hedgerow_firmware::node::Node;
 use hedgerow_protocol::auth::{Key, REHEARSAL_KEY};
 
 /// A node that holds the largest area.
-pub type HostNode = Node<64, 104, 112>;
+pub type HostNode = Node<64, 112, 112>;
 
 /// Who sent a frame to a steward.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]

@@ -39,15 +39,15 @@ struct Dispatch {
 fn dispatch(offers: &[Offer], load_mw: f64) -> Dispatch {
     // A price common to all changes nothing but the dual, and keeps the numbers small.
     let common = offers.iter().map(|offer| offer.b).sum::<f64>() / offers.len() as f64;
-    let mut problem = Problem::<8, 8>::new();
-    let mut scaled = Scaled::<8, 8>::new();
+    let mut problem = Problem::<16, 8>::new();
+    let mut scaled = Scaled::<16, 8>::new();
     for (j, offer) in offers.iter().enumerate() {
         let curvature = 2.0 * offer.c * BASE_MW * BASE_MW;
         problem.curvature[j] = curvature as f32;
         problem.target[j] = (-(offer.b - common) * BASE_MW / curvature) as f32;
         problem.low[j] = (offer.low_mw / BASE_MW) as f32;
         problem.high[j] = (offer.high_mw / BASE_MW) as f32;
-        scaled.matrix_mut()[(0, j)] = 1.0;
+        scaled.matrix_mut().put(0, j, 1.0);
     }
     problem.row_low[0] = (load_mw / BASE_MW) as f32;
     problem.row_high[0] = problem.row_low[0];
@@ -62,12 +62,12 @@ fn dispatch(offers: &[Offer], load_mw: f64) -> Dispatch {
 
 /// Scale and iterate; the iterate and the physical duals.
 fn solve(
-    scaled: &mut Scaled<8, 8>,
-    problem: &Problem<8, 8>,
+    scaled: &mut Scaled<16, 8>,
+    problem: &Problem<16, 8>,
     cols: usize,
     rows: usize,
     eqs: usize,
-) -> (Iterate<8, 8>, [f32; 8]) {
+) -> (Iterate<16, 8>, [f32; 8]) {
     scaled.scale(&problem.curvature[..cols], &vec![Column::Own; cols], rows, eqs, 0..0);
     let mut limits = Limits::new();
     limits.fill(scaled, problem);
@@ -150,17 +150,17 @@ fn law_finds_the_dispatch_of_grainger_and_stevenson_13_1() {
 
 /// A ring of three equal lines: 1/2 p1^2 + p2^2, p1 + p2 = 3, flow (2 p1 + p2)/3 within a limit.
 fn ring(limit: f32) -> ([f64; 2], [f32; 8]) {
-    let mut problem = Problem::<8, 8>::new();
-    let mut scaled = Scaled::<8, 8>::new();
+    let mut problem = Problem::<16, 8>::new();
+    let mut scaled = Scaled::<16, 8>::new();
     problem.curvature[0] = 1.0;
     problem.curvature[1] = 2.0;
     for j in 0..2 {
         problem.low[j] = -10.0;
         problem.high[j] = 10.0;
-        scaled.matrix_mut()[(0, j)] = 1.0;
+        scaled.matrix_mut().put(0, j, 1.0);
     }
-    scaled.matrix_mut()[(1, 0)] = 2.0 / 3.0;
-    scaled.matrix_mut()[(1, 1)] = 1.0 / 3.0;
+    scaled.matrix_mut().put(1, 0, 2.0 / 3.0);
+    scaled.matrix_mut().put(1, 1, 1.0 / 3.0);
     (problem.row_low[0], problem.row_high[0]) = (3.0, 3.0);
     (problem.row_low[1], problem.row_high[1]) = (-limit, limit);
     let (iterate, dual) = solve(&mut scaled, &problem, 2, 2, 1);

@@ -4,6 +4,7 @@
 //! are those of Arm's "Semihosting for AArch32 and AArch64".
 
 const OPEN: u32 = 0x01;
+const WRITE_TEXT: u32 = 0x04;
 const WRITE: u32 = 0x05;
 const READ: u32 = 0x06;
 const COMMAND_LINE: u32 = 0x15;
@@ -66,6 +67,27 @@ pub fn command_line(buffer: &mut [u8]) -> &str {
     }
     let length = buffer.iter().position(|&byte| byte == 0).unwrap_or(0);
     buffer.get(..length).and_then(|used| core::str::from_utf8(used).ok()).unwrap_or("")
+}
+
+/// Print on the emulator's console; at most 31 bytes.
+pub fn print(text: &str) {
+    let mut line = [0; 32];
+    for (to, from) in line.iter_mut().zip(text.bytes().take(31)) {
+        *to = from;
+    }
+    call(WRITE_TEXT, line.as_ptr().cast());
+}
+
+/// Print a number and end the line.
+pub fn print_number(mut number: u32) {
+    let mut digits = [b'0'; 11];
+    digits[10] = b'\n';
+    for digit in digits.iter_mut().take(10).rev() {
+        *digit += (number % 10) as u8;
+        number /= 10;
+    }
+    let first = digits.iter().position(|&digit| digit != b'0').unwrap_or(9).min(9);
+    print(core::str::from_utf8(&digits[first..]).unwrap_or(""));
 }
 
 /// End the emulator with exit status 0.
