@@ -14,6 +14,7 @@ mod link;
 mod link;
 mod meter;
 mod pins;
+#[cfg_attr(feature = "uart", allow(dead_code))]
 mod semi;
 mod vectors;
 
