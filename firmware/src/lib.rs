@@ -13,6 +13,7 @@
 //! set-points, `verdict` tests whether this rung can meet the limits at all,
 //! `ladder` gives and takes back ground, `neighbour` agrees on tie deviations.
 
+pub mod boot;
 pub mod ladder;
 pub mod law;
 pub mod measure;

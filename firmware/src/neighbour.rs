@@ -67,6 +67,11 @@ impl TieEnd {
         }
     }
 
+    /// Before a charter: all zero, so that a static one takes no flash.
+    pub const fn blank() -> Self {
+        Self { silent_ticks: 0, controllable: false, ..Self::new() }
+    }
+
     /// Price pair in the law's cost.
     pub fn price(&self) -> [f32; 2] {
         self.price

@@ -68,7 +68,7 @@ impl<const B: usize, const R: usize> Network<B, R> {
             root: 0,
             kept: [false; B],
             closed: [false; R],
-            parent_line: [NO_LINE; B],
+            parent_line: [0; B],
             order: [0; B],
             reached: 0,
             topology: 0,

@@ -58,9 +58,9 @@ impl<P: OutputPin> Heartbeat<P> {
 ///
 /// Returns the number of bytes read.
 /// Errors: the stream's own.
-pub fn drain<S, const B: usize, const X: usize, const R: usize>(
+pub fn drain<S, const B: usize, const X: usize, const R: usize, const W: usize, const C: usize>(
     stream: &mut S,
-    node: &mut Node<B, X, R>,
+    node: &mut Node<B, X, R, W, C>,
 ) -> Result<usize, S::Error>
 where
     S: Read + ReadReady,
@@ -79,19 +79,31 @@ where
     Ok(total)
 }
 
-/// Run one tick and write every frame to a stream.
+/// Write the answers of the start-up conversation, then run what is pending and write its frames.
 ///
-/// Errors: the stream's own; what was not written of this tick is dropped.
-pub fn tick_to<W: Write, const B: usize, const X: usize, const R: usize>(
-    node: &mut Node<B, X, R>,
-    tick: u32,
-    stream: &mut W,
-) -> Result<(), W::Error> {
+/// Returns the tick that was run.
+/// Errors: the stream's own; what was not written is dropped.
+pub fn turn<
+    S: Write,
+    const B: usize,
+    const X: usize,
+    const R: usize,
+    const W: usize,
+    const C: usize,
+>(
+    node: &mut Node<B, X, R, W, C>,
+    stream: &mut S,
+) -> Result<Option<u32>, S::Error> {
     let mut outcome = Ok(());
-    node.tick(tick, &mut |_, frame| {
+    let mut write = |_: u8, frame: &[u8]| {
         if outcome.is_ok() {
             outcome = stream.write_all(frame);
         }
-    });
-    outcome
+    };
+    node.answer(&mut write);
+    let pending = node.pending_tick();
+    if let Some(tick) = pending {
+        node.tick(tick, &mut write);
+    }
+    outcome.map(|()| pending)
 }

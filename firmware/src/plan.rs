@@ -13,7 +13,7 @@ use heapless::Vec;
 use hedgerow_protocol::charter::{
     CharterReader, Feeder, Header, Line, Meter, Settings, Tie, Unit, sensitivity_len,
 };
-use hedgerow_protocol::limits::TIES_MAX;
+use hedgerow_protocol::limits::{TIES_MAX, wire_bytes};
 use hedgerow_protocol::message::Refusal;
 use nalgebra::SMatrix;
 use serde::Deserialize;
@@ -51,7 +51,7 @@ impl<const B: usize, const X: usize, const R: usize> Plan<B, X, R> {
     pub const fn new() -> Self {
         Self {
             address: 0,
-            base_mva: 100.0,
+            base_mva: 0.0,
             settings: EMPTY_SETTINGS,
             buses: 0,
             lines: Vec::new(),
@@ -92,6 +92,17 @@ impl<const B: usize, const X: usize, const R: usize> Plan<B, X, R> {
     /// Number of rows: equalities, then lines.
     pub fn rows(&self) -> usize {
         self.eqs() + self.lines.len()
+    }
+
+    /// Bytes on the wire of the largest frame to or from this area.
+    pub fn wire_bytes(&self) -> usize {
+        wire_bytes(
+            self.meters.len(),
+            self.lines.len(),
+            self.ties.len(),
+            self.units.len(),
+            self.feeders.len(),
+        )
     }
 
     /// Bus of an actuator, if it exists.
@@ -248,31 +259,32 @@ fn settings_in_range(s: &Settings) -> bool {
         && s.settle_ticks > 0
 }
 
+/// Before a charter: all zero, so that a static plan takes no flash.
 const EMPTY_SETTINGS: Settings = Settings {
-    tick_s: 0.1,
-    iterations: 1,
+    tick_s: 0.0,
+    iterations: 0,
     shadow_iterations: 0,
-    filter_gain: 1.0,
+    filter_gain: 0.0,
     envelope_keep: 0.0,
     freeze_ticks: 0,
     damping_pu_per_hz: 0.0,
     lowest_rung: 0,
-    tie_band: 1.0,
-    angle_band: 1.0,
-    tie_price: 1.0,
-    tie_curvature: 1.0,
-    agreement_penalty: 1.0,
-    agreement_relax: 0.5,
-    settle_ticks: 1,
+    tie_band: 0.0,
+    angle_band: 0.0,
+    tie_price: 0.0,
+    tie_curvature: 0.0,
+    agreement_penalty: 0.0,
+    agreement_relax: 0.0,
+    settle_ticks: 0,
     help_hops: 0,
-    neighbour_ticks: 1,
-    proof_threshold: 1.0,
-    proof_ticks: 1,
-    persist_ticks: 1,
-    climb_ticks: 1,
+    neighbour_ticks: 0,
+    proof_threshold: 0.0,
+    proof_ticks: 0,
+    persist_ticks: 0,
+    climb_ticks: 0,
     climb_margin: 0.0,
-    climb_tolerance: 1.0,
-    dual_clamp: 1.0,
+    climb_tolerance: 0.0,
+    dual_clamp: 0.0,
     return_ramp: 0.0,
-    return_free_hz: 1.0,
+    return_free_hz: 0.0,
 };

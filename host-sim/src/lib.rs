@@ -6,10 +6,12 @@
 //! independent optimum; `report` writes it down; `cli` is the thin front.
 
 pub mod baseline;
+pub mod bench;
 pub mod case;
 pub mod charter;
 pub mod cli;
 pub mod divide;
+pub mod fit;
 pub mod grid;
 pub mod judge;
 pub mod link;

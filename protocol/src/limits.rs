@@ -28,6 +28,26 @@ pub const PAYLOAD_MAX: usize = 23
     + TIES_MAX.div_ceil(8)
     + UNITS_MAX.div_ceil(8);
 
+/// Largest charter of any build.
+pub const CHARTER_MAX: usize =
+    charter_bytes(BUSES_MAX, LINES_MAX, TIES_MAX, UNITS_MAX, FEEDERS_MAX);
+
+/// Bytes that hold the charter of an area of this size.
+///
+/// A bound: header and settings 256 (a name of 96 bytes included), lines 12 each,
+/// ties 26, units and storages 35, feeders 15, meters 5 (one a bus), 4 per
+/// packed sensitivity, and the checksum.
+pub const fn charter_bytes(
+    buses: usize,
+    lines: usize,
+    ties: usize,
+    units: usize,
+    feeders: usize,
+) -> usize {
+    let tables = 12 * lines + 26 * ties + 35 * units + 15 * feeders + 5 * buses;
+    256 + tables + 4 * crate::charter::sensitivity_len(buses) + 4
+}
+
 /// Header bytes: version, id, from, to, boot id, echoed boot id, counter.
 pub const HEADER_BYTES: usize = 16;
 /// Bytes of the truncated HMAC-SHA-256 tag.
@@ -40,6 +60,23 @@ pub const OVERHEAD_BYTES: usize = HEADER_BYTES + TAG_BYTES + CRC_BYTES;
 pub const FRAME_MAX: usize = PAYLOAD_MAX + OVERHEAD_BYTES;
 /// Largest frame on the wire: COBS adds a byte per started 254, and the delimiter.
 pub const WIRE_MAX: usize = FRAME_MAX + FRAME_MAX.div_ceil(254) + 1;
+
+/// Coded bytes that hold any frame to or from an area of this size, delimiter included.
+///
+/// No less than a frame with a part of a charter or of a proof.
+pub const fn wire_bytes(
+    buses: usize,
+    lines: usize,
+    ties: usize,
+    units: usize,
+    feeders: usize,
+) -> usize {
+    let readings = READING_BYTES * (buses + lines + ties + units + 2 * feeders);
+    let bits = lines.div_ceil(8) + ties.div_ceil(8) + units.div_ceil(8);
+    let payload = 23 + readings + bits;
+    let frame = OVERHEAD_BYTES + if payload > PART_MAX { payload } else { PART_MAX };
+    frame + frame.div_ceil(254) + 1
+}
 
 /// Largest payload of a charter or proof part, chosen so that the frame fits a 512-byte buffer.
 pub const PART_MAX: usize = 400;

@@ -15,7 +15,7 @@ use hedgerow_protocol::message::*;
 use page::{PAGE, examples, hex};
 
 /// Name, id, from and to, in the order of the page; append only.
-const FROZEN: [(&str, u8, u8, u8); 13] = [
+const FROZEN: [(&str, u8, u8, u8); 14] = [
     ("Hello", 0x01, 1, PLANT),
     ("CharterPart", 0x02, PLANT, 1),
     ("CharterState", 0x03, 1, PLANT),
@@ -29,6 +29,7 @@ const FROZEN: [(&str, u8, u8, u8); 13] = [
     ("Status", 0x21, 1, PLANT),
     ("ProofPart", 0x22, 1, PLANT),
     ("TieTerms", 0x30, 1, 2),
+    ("Effort", 0x06, 1, PLANT),
 ];
 
 const HASH: [u8; 16] = [0, 1, 2, 3, 4, 5, 6, 7, 8, 9, 10, 11, 12, 13, 14, 15];
@@ -71,6 +72,12 @@ fn plain_example(name: &str) -> Option<Message<'static>> {
         }),
         "Run" => Message::Run(Run { charter: HASH }),
         "Stop" => Message::Stop(Stop { tick: 300 }),
+        "Effort" => Message::Effort(Effort {
+            tick: 7,
+            instructions: 712_345,
+            stack_bytes: 4321,
+            rebuilt: true,
+        }),
         "Schedule" => Message::Schedule(Schedule { tie: 2, export_mw: -45.5, ramp_ticks: 300 }),
         "BasePoint" => Message::BasePoint(BasePoint { unit: 3, base_mw: 250.0, ramp_ticks: 0 }),
         "Restore" => Message::Restore(Restore { tick: 9 }),

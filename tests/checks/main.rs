@@ -4,17 +4,19 @@
 //! of check; data in `tests/data`, helpers in `tests/src`.
 
 mod acceptance;
+mod boards;
 mod catalogue;
 mod closed39;
 mod codes;
+mod divide;
 mod frequency;
 mod incident;
 mod margins;
 mod mutation;
 mod optima;
 mod plays;
-mod sweep;
 mod published;
+mod sweep;
 mod trajectories;
 mod updates;
 mod verdicts;

@@ -9,6 +9,7 @@
 //! feeders and ties; [`Area::programme`] writes A, l, r and the rung's ranges.
 //! The inverse Laplacian is computed here from the lines, not by the steward.
 
+use crate::grounded::{inverse, laplacian};
 use crate::programme::{Kind, Programme};
 use rand::rngs::ChaCha8Rng;
 use rand::{Rng, SeedableRng};
@@ -179,16 +180,9 @@ impl Area {
 
     /// Inverse Laplacian of the closed lines, bus 0 grounded.
     fn inverse(&self) -> Vec<Vec<f64>> {
-        let n = self.loads.len();
-        let mut laplacian = vec![vec![0.0; n]; n];
-        for line in self.lines.iter().filter(|line| line.closed) {
-            let b = 1.0 / line.x;
-            laplacian[line.from][line.from] += b;
-            laplacian[line.to][line.to] += b;
-            laplacian[line.from][line.to] -= b;
-            laplacian[line.to][line.from] -= b;
-        }
-        grounded_inverse(laplacian)
+        let closed = self.lines.iter().filter(|line| line.closed);
+        let lines: Vec<_> = closed.map(|line| (line.from, line.to, line.x)).collect();
+        inverse(laplacian(self.loads.len(), &lines))
     }
 
     /// The problem of a rung (0 `keep` to 3 `shed`), physical pu.
@@ -399,24 +393,4 @@ fn draw_ties(chance: &mut Chance, n: usize) -> Vec<Tie> {
 
 fn product(a: &[Vec<f64>], x: &[f64]) -> Vec<f64> {
     a.iter().map(|row| row.iter().zip(x).map(|(a, x)| a * x).sum()).collect()
-}
-
-/// Inverse of a Laplacian without its first row and column, those zero (Gauss-Jordan, pivots on the diagonal).
-fn grounded_inverse(mut laplacian: Vec<Vec<f64>>) -> Vec<Vec<f64>> {
-    let n = laplacian.len();
-    let mut inverse: Vec<Vec<f64>> =
-        (0..n).map(|i| (0..n).map(|j| f64::from(u8::from(i == j && i > 0))).collect()).collect();
-    for k in 1..n {
-        let pivot = laplacian[k][k];
-        laplacian[k].iter_mut().chain(&mut inverse[k]).for_each(|v| *v /= pivot);
-        let (row, right) = (laplacian[k].clone(), inverse[k].clone());
-        for i in (1..n).filter(|&i| i != k) {
-            let factor = laplacian[i][k];
-            for j in 1..n {
-                laplacian[i][j] -= factor * row[j];
-                inverse[i][j] -= factor * right[j];
-            }
-        }
-    }
-    inverse
 }

@@ -6,14 +6,12 @@
 
 use crate::programme::{Kind, Programme};
 use hedgerow_firmware::law::scale::Column;
-use hedgerow_firmware::law::{Iterate, Limits, Problem, Scaled};
+use hedgerow_firmware::law::{Iterate, Limits, Problem, Scaled, dual_clamp};
 
 /// Most unknowns.
 pub const COLS: usize = 64;
 /// Most rows.
 pub const ROWS: usize = 104;
-/// Clamp of the scaled duals, as in every charter.
-pub const CLAMP: f32 = 2000.0;
 
 /// The law on one problem.
 pub struct Board {
@@ -22,6 +20,7 @@ pub struct Board {
     limits: Box<Limits<COLS, ROWS>>,
     iterate: Box<Iterate<COLS, ROWS>>,
     factors: Vec<f32>,
+    clamp: f32,
 }
 
 impl Board {
@@ -44,6 +43,7 @@ impl Board {
             limits: Box::new(Limits::new()),
             iterate: Box::new(Iterate::new()),
             factors: factors.to_vec(),
+            clamp: dual_clamp(reach(programme)),
         };
         board.set_limits(programme);
         let columns: Vec<Column> = (0..programme.cols()).map(|j| column(programme, j)).collect();
@@ -86,7 +86,7 @@ impl Board {
         let mut left = count;
         while left > 0 {
             let now = left.min(usize::from(u16::MAX));
-            self.iterate.run(&self.scaled, &self.limits, sigma, CLAMP, now as u16);
+            self.iterate.run(&self.scaled, &self.limits, sigma, self.clamp, now as u16);
             left -= now;
         }
     }
@@ -108,10 +108,22 @@ impl Board {
         dual
     }
 
+    /// Clamp of the scaled duals.
+    pub fn clamp(&self) -> f32 {
+        self.clamp
+    }
+
     /// Largest magnitude among the scaled duals.
     pub fn dual_max(&self) -> f32 {
         self.iterate.dual().iter().fold(0.0, |most, y| y.abs().max(most))
     }
+}
+
+/// Largest range of a unit times the root of its curvature.
+fn reach(programme: &Programme) -> f32 {
+    let units = (0..programme.cols()).filter(|&j| programme.kinds[j] == Kind::Unit);
+    let reach = units.map(|j| (programme.hi[j] - programme.lo[j]) * programme.q[j].sqrt());
+    reach.fold(0.0, f64::max) as f32
 }
 
 fn column(programme: &Programme, j: usize) -> Column {

@@ -54,13 +54,11 @@ impl Border {
         if border.abs() > 500.0 || beyond > 500.0 {
             return None;
         }
-        Some(Self {
-            seed,
-            family,
-            distance,
-            possible: base.moved(&direction, border - distance).rounded(),
-            impossible: base.moved(&direction, beyond).rounded(),
-        })
+        let possible = base.moved(&direction, border - distance).rounded();
+        let impossible = base.moved(&direction, beyond).rounded();
+        // A line whose limits have crossed is no line: ratings are not negative.
+        let crossed = impossible.l.iter().zip(&impossible.r).any(|(l, r)| l > r);
+        (!crossed).then_some(Self { seed, family, distance, possible, impossible })
     }
 }
 

@@ -60,9 +60,9 @@ impl Facts {
             let (low, high) = (f64::from(self.lo[j]), f64::from(self.hi[j]));
             gap += (column * low).min(column * high);
         }
-        for i in 0..self.low.len() {
-            let y = f64::from(dual[i]);
-            gap -= (y * f64::from(self.low[i])).max(y * f64::from(self.high[i]));
+        for ((&low, &high), &y) in self.low.iter().zip(&self.high).zip(dual) {
+            let y = f64::from(y);
+            gap -= (y * f64::from(low)).max(y * f64::from(high));
         }
         gap / dual.iter().map(|&y| f64::from(y).abs()).sum::<f64>()
     }

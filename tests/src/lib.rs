@@ -5,5 +5,6 @@ pub mod board;
 pub mod border;
 pub mod detector;
 pub mod exact;
+pub mod grounded;
 pub mod programme;
 pub mod table;

@@ -38,7 +38,7 @@ impl<const X: usize, const R: usize> Problem<X, R> {
             target: [0.0; X],
             price: [0.0; X],
             weight: [0.0; X],
-            curvature: [1.0; X],
+            curvature: [0.0; X],
             row_low: [0.0; R],
             row_high: [0.0; R],
         }

@@ -27,6 +27,6 @@ pub mod kernel;
 pub mod limits;
 pub mod scale;
 
-pub use iterate::Iterate;
+pub use iterate::{Iterate, dual_clamp};
 pub use limits::{Limits, Problem};
 pub use scale::Scaled;

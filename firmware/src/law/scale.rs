@@ -65,20 +65,20 @@ pub struct Scaled<const X: usize, const R: usize> {
 }
 
 impl<const X: usize, const R: usize> Scaled<X, R> {
-    /// An empty problem.
+    /// An empty problem: all zero, so that a static one takes no flash.
     pub const fn new() -> Self {
         Self {
             a: zeros(),
             at: zeros(),
-            s: [1.0; X],
-            e: [1.0; R],
+            s: [0.0; X],
+            e: [0.0; R],
             t: [[0.0; EQUALITIES_MAX]; EQUALITIES_MAX],
             cols: 0,
             rows: 0,
             eqs: 0,
-            sigma: 1.0,
-            sigma_flows_fixed: 1.0,
-            sigma_ties_fixed: 1.0,
+            sigma: 0.0,
+            sigma_flows_fixed: 0.0,
+            sigma_ties_fixed: 0.0,
         }
     }
 

@@ -94,6 +94,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             | Message::CharterState(_)
             | Message::Run(_)
             | Message::Stop(_)
+            | Message::Effort(_)
             | Message::Orders(_)
             | Message::Status(_)
             | Message::ProofPart(_) => false,

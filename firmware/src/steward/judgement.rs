@@ -7,9 +7,10 @@
 
 use super::Steward;
 use super::ranges::{Boxes, between};
-use crate::law::kernel::{abs, max_abs, min};
+use crate::law::kernel::{abs, max, max_abs, min};
 use crate::neighbour::TieEnd;
-use crate::verdict::{Product, Ranges, Rows, dust, shortfall};
+use crate::verdict::candidate::Candidates;
+use crate::verdict::{Product, Ranges, Rows, shortfall};
 use hedgerow_protocol::message::Rung;
 
 /// Slack added to the range between two ends, pu: they never agree to the bit.
@@ -44,7 +45,7 @@ pub struct Proof<const X: usize, const R: usize> {
 /// What the trial carries from tick to tick.
 #[derive(Clone, Debug)]
 pub struct Judgement<const X: usize, const R: usize> {
-    last: [f32; R],
+    candidates: Candidates<R>,
     pause_ticks: u16,
     gap_trend: f32,
     shadow_pause_ticks: u16,
@@ -66,16 +67,16 @@ impl<const X: usize, const R: usize> Judgement<X, R> {
     /// Nothing tried yet.
     pub const fn new() -> Self {
         Self {
-            last: [0.0; R],
+            candidates: Candidates::new(),
             pause_ticks: 0,
             gap_trend: 0.0,
             shadow_pause_ticks: 0,
-            proven: -1.0,
+            proven: 0.0,
             error: [0.0; R],
             row_low: [0.0; R],
             row_high: [0.0; R],
             rung: Rung::Keep,
-            proof: Proof { dual: [0.0; R], boxes: Boxes::new(), shortfall: -1.0 },
+            proof: Proof { dual: [0.0; R], boxes: Boxes::new(), shortfall: 0.0 },
         }
     }
 }
@@ -91,11 +92,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     pub(super) fn judge(&mut self, clear: bool) -> (bool, bool) {
         let mut dual = [0.0; R];
         self.scaled.physical_dual(&self.main.y, &mut dual);
-        let mut difference = dual;
-        for (value, last) in difference.iter_mut().zip(&self.judgement.last) {
-            *value -= last;
-        }
-        self.judgement.last = dual;
+        let candidates = self.judgement.candidates.next(&dual);
         self.judgement.proven = -1.0;
         self.judgement.proof.shortfall = -1.0;
         self.judgement.error = [0.0; R];
@@ -111,14 +108,16 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         let stalled = self.is_agreement_stalled();
         let leaning = self.ladder.rung() != Rung::Keep && stalled;
         let threshold = self.plan.settings.proof_threshold;
-        let (mut hard, mut conditional) = (false, false);
-        for candidate in [&mut dual, &mut difference] {
-            dust(candidate);
+        for candidate in &candidates {
             let proven = self.try_on(candidate, &most);
-            self.judgement.proven = crate::law::kernel::max(proven, self.judgement.proven);
-            hard |= proven > threshold;
+            self.judgement.proven = max(proven, self.judgement.proven);
+        }
+        let hard = self.judgement.proven > threshold;
+        let mut conditional = false;
+        for candidate in candidates.iter().filter(|_| leaning && !hard) {
+            // A proof that holds whatever comes is worth more; only without one is this kept.
             for boxes in [Some(&between), theirs.as_ref()].into_iter().flatten() {
-                conditional |= leaning && self.try_on(candidate, boxes) > threshold;
+                conditional |= self.try_on(candidate, boxes) > threshold;
             }
         }
         self.drop_stale_dual(&most);

@@ -70,10 +70,11 @@ pub struct Steward<const B: usize, const X: usize, const R: usize> {
     ladder: Ladder,
     proofs: u16,
     verdict: Verdict,
+    rebuilt: bool,
 }
 
 impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
-    /// A steward without a charter.
+    /// A steward without a charter: all zero, so that a static one takes no flash.
     pub const fn new() -> Self {
         Self {
             plan: Plan::new(),
@@ -88,9 +89,9 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             unit_on: [false; X],
             schedule: [Ramped::at(0.0); TIES_MAX],
             base: [Ramped::at(0.0); X],
-            ends: [TieEnd::new(); TIES_MAX],
+            ends: [TieEnd::blank(); TIES_MAX],
             open: [false; TIES_MAX],
-            distance: NOBODY,
+            distance: 0,
             boxes: Boxes::new(),
             kinds: [Column::Closed; X],
             scaled: Scaled::new(),
@@ -103,7 +104,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             judgement: Judgement::new(),
             ladder: Ladder::new(),
             proofs: 0,
-            verdict: Verdict::Blind,
+            verdict: Verdict::Settled,
+            rebuilt: false,
         }
     }
 
@@ -129,6 +131,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         }
         self.ends = [TieEnd::new(); TIES_MAX];
         self.open = [false; TIES_MAX];
+        self.distance = NOBODY;
         self.kinds = [Column::Closed; X];
         self.main = Iterate::new();
         self.shadow = Iterate::new();
@@ -146,6 +149,21 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     /// Whether a charter is loaded.
     pub fn is_ready(&self) -> bool {
         self.ready
+    }
+
+    /// Tick of the newest measurements taken in, if there are any.
+    pub fn newest_tick(&self) -> Option<u32> {
+        (self.ready && self.measured.any).then_some(self.measured.tick)
+    }
+
+    /// What the last tick found of its rung.
+    pub fn verdict(&self) -> Verdict {
+        if self.ready { self.verdict } else { Verdict::Blind }
+    }
+
+    /// Whether the last tick built the scaling again.
+    pub fn has_rebuilt(&self) -> bool {
+        self.rebuilt
     }
 
     /// The plan in force.
@@ -191,7 +209,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         );
         let clear = sight == Sight::Clear && self.estimate.is_started();
         self.refresh_boxes();
-        if self.update_kinds() || moved {
+        self.rebuilt = self.update_kinds() || moved;
+        if self.rebuilt {
             self.rebuild();
         }
         self.fill_problem();

@@ -43,7 +43,7 @@ struct TieShare {
 impl Rows {
     /// No ties.
     pub const fn new() -> Self {
-        Self { attached: [false; TIES_MAX], angles: Vec::new(), reference: None, angle_scale: 1.0 }
+        Self { attached: [false; TIES_MAX], angles: Vec::new(), reference: None, angle_scale: 0.0 }
     }
 
     /// Choose the rows for the present topology.

@@ -140,15 +140,7 @@ pub fn steward(base_mva: f64) -> StewardSettings {
 
 /// Links when a play says nothing: no faults.
 pub fn links() -> Links {
-    Links {
-        delay_ticks: 0,
-        jitter_ticks: 0,
-        loss: 0.0,
-        duplicate: 0.0,
-        reorder: 0.0,
-        corrupt: 0.0,
-        plant_too: false,
-    }
+    crate::link::FAULTLESS
 }
 
 #[cfg(test)]

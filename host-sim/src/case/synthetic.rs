@@ -6,7 +6,7 @@
 //! above 80 % in the base case.
 //!
 //! Data flow: seed -> `lay_out` (places, lines by distance) -> `equip` (loads, units)
-//! -> base flow -> ratings -> `write`.
+//! -> base flow -> stronger lines and ratings -> `write`.
 //! Source: mean degree and local growth of transmission grids after Wang, Scaglione
 //! and Thomas, IEEE Trans. Smart Grid 1(1), 2010, from memory; the figures are ours.
 
@@ -58,6 +58,7 @@ pub fn synthetic(buses: usize, areas: usize, seed: u64) -> Result<String, Synthe
     let mut grid = lay_out::lay_out(buses, areas, &mut draw);
     grid.name = format!("Synthetic {buses}-{areas}-{seed}");
     equip::equip(&mut grid, &mut Draw::new(seed, "plant"));
+    strengthen(&mut grid)?;
     rate(&mut grid, &mut Draw::new(seed, "ratings"))?;
     Ok(write::write(&grid, buses, areas, seed))
 }
@@ -95,16 +96,39 @@ pub(super) fn rounded(value: f64, decimals: i32) -> f64 {
     (value * scale).round() / scale
 }
 
-/// Ratings by the base flow: usual lines at 25 to 80 %, quiet ones on a size of their own.
-fn rate(grid: &mut Grid, draw: &mut Draw) -> Result<(), DcError> {
+/// Rounds in which corridors with much flow are built stronger.
+const STRENGTHENINGS: usize = 3;
+/// Flow that one circuit at 230 kV carries without a second one beside it, in MW, about.
+const CIRCUIT_MW: f64 = 120.0;
+
+/// Build lines with much flow stronger (more circuits, or a higher voltage), as grids have grown.
+fn strengthen(grid: &mut Grid) -> Result<(), DcError> {
+    let plain_pu: Vec<f64> = grid.lines.iter().map(|line| line.reactance_pu).collect();
+    for _ in 0..STRENGTHENINGS {
+        let flow_mw = flows_mw(grid)?;
+        for ((line, plain_pu), flow) in grid.lines.iter_mut().zip(&plain_pu).zip(flow_mw) {
+            let circuits = (1.0 + flow.abs() / CIRCUIT_MW).powf(1.2);
+            line.reactance_pu = rounded((plain_pu / circuits).max(0.0005), 5);
+        }
+    }
+    Ok(())
+}
+
+fn flows_mw(grid: &Grid) -> Result<Vec<f64>, DcError> {
     let injection_mw = crate::divide::base::injections_mw(grid);
-    let flow_mw = DcNetwork::new(grid, &vec![true; grid.lines.len()])?.flows_mw(&injection_mw)?.flow_mw;
+    Ok(DcNetwork::new(grid, &vec![true; grid.lines.len()])?.flows_mw(&injection_mw)?.flow_mw)
+}
+
+/// Ratings by the base flow: busy lines at 35 to 78 %, quiet ones on a size of their own.
+fn rate(grid: &mut Grid, draw: &mut Draw) -> Result<(), DcError> {
+    let flow_mw = flows_mw(grid)?;
     let mean_mw = flow_mw.iter().map(|flow| flow.abs()).sum::<f64>() / flow_mw.len().max(1) as f64;
-    for line in 0..grid.lines.len() {
-        let tie = area(&grid.buses, grid.lines[line].from) != area(&grid.buses, grid.lines[line].to);
+    for (line, base_mw) in flow_mw.iter().enumerate() {
+        let tie =
+            area(&grid.buses, grid.lines[line].from) != area(&grid.buses, grid.lines[line].to);
         // Ties are built for help, so they have more to spare.
         let floor_mw = mean_mw * if tie { draw.within(2.0, 4.0) } else { draw.within(0.6, 1.6) };
-        let wanted_mw = (flow_mw[line].abs() / draw.within(0.35, 0.78)).max(floor_mw);
+        let wanted_mw = (base_mw.abs() / draw.within(0.35, 0.78)).max(floor_mw);
         grid.lines[line].rating_mw = (wanted_mw / 5.0).ceil() * 5.0;
     }
     Ok(())
@@ -147,7 +171,10 @@ mod tests {
             let ties = (0..grid.lines.len()).filter(|&line| is_tie(&grid, line)).count();
             assert!((10..=60).contains(&ties), "{ties} ties");
             let x: Vec<f64> = grid.lines.iter().map(|line| line.reactance_pu).collect();
-            assert!(x.iter().all(|x| (0.002..=0.4).contains(x)), "reactances");
+            assert!(x.iter().all(|x| (0.0005..=0.4).contains(x)), "reactances");
+            let angle = |pick: fn(f64, f64) -> f64| base.angle_rad.iter().copied().fold(0.0, pick);
+            let spread_deg = (angle(f64::max) - angle(f64::min)).to_degrees();
+            assert!((5.0..=120.0).contains(&spread_deg), "angles {spread_deg} degrees apart");
             assert!(!grid.feeders.is_empty() && grid.units.len() > 20);
         }
     }

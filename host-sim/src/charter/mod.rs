@@ -12,6 +12,8 @@
 pub mod proof;
 mod settings;
 
+pub use settings::TIE_CURVATURE;
+
 use crate::case::model::{FeederKind, Grid, Play, Restore, Unit, UnitKind, UnitStatus};
 use crate::grid::dc::{DcError, DcNetwork, DcSolution};
 use crate::grid::graph::blocks;

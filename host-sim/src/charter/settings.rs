@@ -19,8 +19,9 @@ const CLIMB_S: f64 = 5.0;
 const PROOF_TICKS: u16 = 5;
 /// Load returns at most at this share of the units' ramps, so that they can follow.
 const RETURN_SHARE: f64 = 0.5;
-/// Price curvature of a tie deviation: small, so that the price decides.
-pub(crate) const TIE_CURVATURE: f64 = 0.05;
+/// Price curvature of a tie deviation and of a mid-tie angle deviation at each end,
+/// per pu squared: small, so that the price decides.
+pub const TIE_CURVATURE: f64 = 0.05;
 
 pub(super) fn per_tick(grid: &Grid, play: &Play, area: &Area) -> Settings {
     let (tick_s, s) = (play.run.tick_s, &play.steward);
@@ -52,10 +53,20 @@ pub(super) fn per_tick(grid: &Grid, play: &Play, area: &Area) -> Settings {
         climb_ticks: ticks(CLIMB_S),
         climb_margin: 0.01,
         climb_tolerance: 0.002,
-        dual_clamp: 2000.0,
+        dual_clamp: hedgerow_firmware::law::dual_clamp(reach(grid, area)),
         return_ramp: (RETURN_SHARE * ramps_mw_per_s(grid, area) * per_base) as f32,
         return_free_hz: 0.01,
     }
+}
+
+/// Largest range of a unit, pu, times the root of its cost's curvature.
+fn reach(grid: &Grid, area: &Area) -> f32 {
+    let units = area.units.iter().map(|&unit| &grid.units[unit]);
+    let of = units.map(|unit| {
+        let range_mw = unit.emergency_max_mw - unit.emergency_min_mw;
+        range_mw / grid.base_mva * unit.cost_per_pu2.sqrt()
+    });
+    of.fold(0.0, f64::max) as f32
 }
 
 /// Sum of the ramps of the units that have one; storages would empty themselves.

@@ -44,9 +44,10 @@ pub struct Args {
     /// Propose this many areas instead of taking the file's.
     #[arg(long, value_name = "N")]
     pub areas: Option<usize>,
-    /// What makes a line worth keeping inside a proposed area.
-    #[arg(long, value_enum, default_value = "flow")]
-    pub weight: WeightName,
+    /// What makes a line worth keeping inside a proposed area; without it both
+    /// are tried and the areas that load the lines less are taken.
+    #[arg(long, value_enum)]
+    pub weight: Option<WeightName>,
     /// Directory for the results [default: hedgerow-out/divide-<grid>].
     #[arg(long, value_name = "DIR")]
     pub out: Option<PathBuf>,
@@ -66,13 +67,20 @@ pub struct Args {
 /// Errors: [`Failure::Input`] for the grid and the directory given,
 /// [`Failure::Environment`] for what the machine refuses.
 pub fn run(args: &Args) -> Result<Ending, Failure> {
+    let stop = stop_flag()?;
+    run_until(args, &stop)
+}
+
+/// Run it until it ends or the flag is set.
+fn run_until(args: &Args, stop: &AtomicBool) -> Result<Ending, Failure> {
     let (source, shown) = source(args)?;
-    let grid = parse_grid(&source, &shown).map_err(|problems| super::check::input_failure(&problems))?;
+    let grid =
+        parse_grid(&source, &shown).map_err(|problems| super::check::input_failure(&problems))?;
     let (dir, existing) = target(args);
     report::check_dir(&dir, existing).map_err(refused)?;
-    let stop = stop_flag()?;
     let mut progress = Progress::new(&format!("dividing {}", grid.name), args.quiet);
-    let settings = Settings { areas: args.areas, weight: weight(args.weight), ..Settings::default() };
+    let settings =
+        Settings { areas: args.areas, weight: args.weight.map(weight), ..Settings::default() };
     let division = divide(&grid, &settings, &mut |share| {
         progress.at(share);
         !stop.load(Ordering::Relaxed)
@@ -137,8 +145,18 @@ fn json(document: &figures::Document) -> Result<String, Failure> {
 fn outages_csv(document: &figures::Document) -> Result<String, csv::Error> {
     let mut table = csv::Writer::from_writer(Vec::new());
     table.write_record([
-        "line", "area", "flow_before_mw", "flow_after_mw", "outside_before_mw", "outside_before_line",
-        "worst_loading_before", "worst_line_before", "outside_after_mw", "worst_loading_after", "worst_line_after",
+        "line",
+        "area",
+        "pocket",
+        "flow_before_mw",
+        "flow_after_mw",
+        "outside_before_mw",
+        "outside_before_line",
+        "worst_loading_before",
+        "worst_line_before",
+        "outside_after_mw",
+        "worst_loading_after",
+        "worst_line_after",
     ])?;
     for row in &document.outages {
         let cells = |effect: &Option<figures::EffectFigures>| match effect {
@@ -154,6 +172,7 @@ fn outages_csv(document: &figures::Document) -> Result<String, csv::Error> {
         table.write_record([
             row.line.clone(),
             row.area.clone(),
+            row.pocket.map(|pocket| pocket.to_string()).unwrap_or_default(),
             row.flow_before_mw.to_string(),
             row.flow_after_mw.to_string(),
             before.0,
@@ -176,7 +195,9 @@ fn write_all(
     division: &Division,
     document: &figures::Document,
 ) -> Result<Vec<PathBuf>, Failure> {
-    let layout = |error: &dyn std::fmt::Display| Failure::Environment(format!("cannot lay out the results: {error}"));
+    let layout = |error: &dyn std::fmt::Display| {
+        Failure::Environment(format!("cannot lay out the results: {error}"))
+    };
     let (before, after) = page::maps(division);
     let files = [
         ("divided.grid.toml", file::divided_text(source, division).map_err(|e| layout(&e))?),
@@ -203,7 +224,9 @@ fn write_all(
 fn refused(error: ReportError) -> Failure {
     match error {
         ReportError::Occupied(_) => Failure::Input(error.to_string()),
-        ReportError::Write { .. } | ReportError::Layout { .. } => Failure::Environment(error.to_string()),
+        ReportError::Write { .. } | ReportError::Layout { .. } => {
+            Failure::Environment(error.to_string())
+        }
     }
 }
 
@@ -214,4 +237,102 @@ fn stop_flag() -> Result<Arc<AtomicBool>, Failure> {
     ctrlc::set_handler(move || seen.store(true, Ordering::Relaxed))
         .map_err(|e| Failure::Environment(format!("cannot catch Ctrl-C: {e}")))?;
     Ok(flag)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// A directory of this test alone, removed at the end.
+    struct Dir(PathBuf);
+
+    impl Dir {
+        fn new(name: &str) -> Self {
+            Self(
+                std::env::temp_dir().join(format!("hedgerow-divide-{name}-{}", std::process::id())),
+            )
+        }
+    }
+
+    impl Drop for Dir {
+        fn drop(&mut self) {
+            let _ = std::fs::remove_dir_all(&self.0);
+        }
+    }
+
+    fn args(dir: &Dir) -> Args {
+        Args {
+            grid: None,
+            areas: None,
+            weight: None,
+            out: Some(dir.0.clone()),
+            force: false,
+            json: true,
+            quiet: true,
+        }
+    }
+
+    fn ended(args: &Args) -> Result<Ending, Failure> {
+        run_until(args, &AtomicBool::new(false))
+    }
+
+    #[test]
+    fn divides_the_built_in_example_and_writes_every_file_once() {
+        let dir = Dir::new("files");
+        assert_eq!(ended(&args(&dir)), Ok(Ending::Kept));
+        for name in
+            ["divided.grid.toml", "report.html", "map-after.svg", "outages.csv", "result.json"]
+        {
+            assert!(dir.0.join(name).is_file(), "{name}");
+        }
+        let grid =
+            crate::case::read_grid(&dir.0.join("divided.grid.toml")).expect("it passes its check");
+        assert_eq!(grid.lines.iter().filter(|line| !line.closed).count(), 3);
+        let text = std::fs::read_to_string(dir.0.join("result.json")).expect("a file");
+        let document: serde_json::Value = serde_json::from_str(&text).expect("JSON");
+        assert_eq!((&document["outcome"], &document["trees"]), (&"kept".into(), &8.0.into()));
+        assert!(
+            matches!(ended(&args(&dir)), Err(Failure::Input(text)) if text.contains("--force"))
+        );
+        assert_eq!(ended(&Args { force: true, ..args(&dir) }), Ok(Ending::Kept));
+    }
+
+    #[test]
+    fn a_line_above_its_rating_is_a_bad_result() {
+        let dir = Dir::new("bad");
+        std::fs::create_dir_all(&dir.0).expect("a directory");
+        let path = dir.0.join("weak.grid.toml");
+        std::fs::write(&path, GRID_TEXT.replace("rating_mw = 115.0", "rating_mw = 110.5"))
+            .expect("a file");
+        // Ashmere is short of 110 MW, which one tie must bring.
+        let out = Some(dir.0.join("out"));
+        let weak = Args { grid: Some(path.clone()), out: out.clone(), ..args(&dir) };
+        assert_eq!(ended(&weak), Ok(Ending::Kept));
+        let text = std::fs::read_to_string(&path)
+            .expect("a file")
+            .replace("rating_mw = 110.5", "rating_mw = 109.0");
+        std::fs::write(&path, text).expect("a file");
+        assert_eq!(ended(&Args { force: true, ..weak }), Ok(Ending::Broken));
+    }
+
+    #[test]
+    fn wrong_input_says_what_would_be_right() {
+        let dir = Dir::new("wrong");
+        let missing = Args { grid: Some("no/such.grid.toml".into()), ..args(&dir) };
+        assert!(
+            matches!(ended(&missing), Err(Failure::Input(text)) if text.contains("no/such.grid.toml"))
+        );
+        let many = Args { areas: Some(40), ..args(&dir) };
+        assert!(
+            matches!(ended(&many), Err(Failure::Input(text)) if text.contains("a third of the buses"))
+        );
+        assert!(!dir.0.exists(), "nothing is written");
+    }
+
+    #[test]
+    fn a_set_flag_ends_as_interrupted_with_files_written() {
+        let dir = Dir::new("stop");
+        assert_eq!(run_until(&args(&dir), &AtomicBool::new(true)), Ok(Ending::Interrupted));
+        assert!(dir.0.join("result.json").is_file());
+    }
 }

@@ -4,8 +4,10 @@
 //! exit code. Results go to stdout, progress and problems to stderr. Colour is
 //! used only on a terminal, never with `NO_COLOR`, and never alone.
 
+pub mod bench;
 pub mod check;
 pub mod divide;
+pub mod fit;
 pub mod import;
 pub mod margins;
 pub mod new;
@@ -59,6 +61,10 @@ pub struct Cli {
 pub enum Command {
     /// Run a disturbance in closed loop, judge its end and write the report.
     Rehearse(rehearse::Args),
+    /// Run a play with boards in the loop, in lockstep, and keep every frame.
+    Bench(bench::Args),
+    /// Show whether each area's steward fits a chip, from images built and run now.
+    Fit(fit::Args),
     /// Read a grid or a play and say what it holds, or what is wrong with it.
     Check(check::Args),
     /// Turn an IEEE Common Data Format file into a grid file.
@@ -79,6 +85,8 @@ pub enum Command {
 pub fn run(cli: &Cli) -> Result<Ending, Failure> {
     match &cli.command {
         Command::Rehearse(args) => rehearse::run(args),
+        Command::Bench(args) => bench::run(args),
+        Command::Fit(args) => fit::run(args),
         Command::Check(args) => check::run(args),
         Command::Import(args) => import::run(args),
         Command::Divide(args) => divide::run(args),

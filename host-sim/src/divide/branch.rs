@@ -49,8 +49,17 @@ pub fn search(
 ) -> Outcome {
     let corridors = corridors(problem, base_mw);
     let ends: Vec<(usize, usize)> = corridors.iter().map(|corridor| corridor.areas).collect();
-    let mut search =
-        Search { problem, corridors, ends, best: start, bound, work_max, work: 0, go_on, ended: false };
+    let mut search = Search {
+        problem,
+        corridors,
+        ends,
+        best: start,
+        bound,
+        work_max,
+        work: 0,
+        go_on,
+        ended: false,
+    };
     let mut marks = vec![Mark::Undecided; search.corridors.len()];
     search.split(&mut marks);
     Outcome { best: search.best, finished: !search.ended }
@@ -114,7 +123,9 @@ impl Search<'_> {
             .map(|corridor| found.is_bridge[corridor].then(|| self.sure(corridor, &alive)))
             .collect();
         let settled = |area: usize| {
-            (0..alive.len()).filter(|&c| alive[c] && touches(self.ends[c], area)).all(|c| sure[c].is_some())
+            (0..alive.len())
+                .filter(|&c| alive[c] && touches(self.ends[c], area))
+                .all(|c| sure[c].is_some())
         };
         let settled: Vec<usize> = (0..areas).filter(|&area| settled(area)).collect();
         let known: Vec<Sure> = sure.iter().flatten().cloned().collect();
@@ -128,13 +139,24 @@ impl Search<'_> {
         if bound >= self.best.worst.loading {
             return;
         }
-        let open = (0..alive.len()).find(|&c| marks[c] == Mark::Undecided && sure[c].is_none());
-        match open {
+        match self.next(marks, &sure) {
             Some(corridor) => self.decide(marks, corridor),
             // What is alive and unsure but decided would be a ring of kept corridors.
             None if known.len() + 1 == areas => self.choose(known),
             None => {}
         }
+    }
+
+    /// The corridor to decide next: of the area that needs fewest more to have its flows known.
+    fn next(&self, marks: &[Mark], sure: &[Option<Sure>]) -> Option<usize> {
+        let open = |c: &usize| marks[*c] == Mark::Undecided && sure[*c].is_none();
+        let mut around = vec![0_usize; self.problem.surplus_mw.len()];
+        for corridor in (0..marks.len()).filter(open) {
+            around[self.ends[corridor].0] += 1;
+            around[self.ends[corridor].1] += 1;
+        }
+        let (a, b) = (|c: usize| self.ends[c].0, |c: usize| self.ends[c].1);
+        (0..marks.len()).filter(open).min_by_key(|&c| around[a(c)].min(around[b(c)]))
     }
 
     fn decide(&mut self, marks: &mut [Mark], corridor: usize) {
@@ -150,7 +172,8 @@ impl Search<'_> {
     /// Whether the kept corridors already join the ends of this one.
     fn closes_ring(&self, marks: &[Mark], corridor: usize) -> bool {
         let kept: Vec<bool> = marks.iter().map(|&mark| mark == Mark::Kept).collect();
-        let group = crate::grid::graph::components(self.problem.surplus_mw.len(), &self.ends, &kept).0;
+        let group =
+            crate::grid::graph::components(self.problem.surplus_mw.len(), &self.ends, &kept).0;
         let (a, b) = self.ends[corridor];
         group[a] == group[b]
     }
@@ -160,7 +183,8 @@ impl Search<'_> {
         let mut rest = alive.to_vec();
         rest[corridor] = false;
         let areas = self.ends[corridor];
-        let group = crate::grid::graph::components(self.problem.surplus_mw.len(), &self.ends, &rest).0;
+        let group =
+            crate::grid::graph::components(self.problem.surplus_mw.len(), &self.ends, &rest).0;
         let behind = group.iter().zip(&self.problem.surplus_mw);
         let flow_mw = behind.filter(|(g, _)| **g == group[areas.0]).map(|(_, s)| s).sum();
         Sure { areas, flow_mw, ties: self.corridors[corridor].ties.clone() }
@@ -168,7 +192,8 @@ impl Search<'_> {
 
     /// Least loading among the ties that the corridor may use.
     fn tie_loading(&self, sure: &Sure) -> f64 {
-        let best = sure.ties.iter().map(|&tie| sure.flow_mw.abs() / self.problem.ties[tie].rating_mw);
+        let best =
+            sure.ties.iter().map(|&tie| sure.flow_mw.abs() / self.problem.ties[tie].rating_mw);
         best.fold(f64::INFINITY, f64::min)
     }
 

@@ -66,6 +66,12 @@ pub struct Document {
     pub bridges_after: usize,
     /// Pockets that reach over an area's border (0 by construction).
     pub leaks: usize,
+    /// Pockets of the divided grid.
+    pub pockets: Vec<PocketFigures>,
+    /// Outages in the table after which a line is above its rating, before the division.
+    pub overloading_before: usize,
+    /// The same after it, the rest of the grid apart.
+    pub overloading_after: usize,
     /// Outages, largest effect outside before the division first.
     pub outages: Vec<OutageFigures>,
     /// Internal lines left out of the table.
@@ -95,6 +101,17 @@ pub struct AreaFigures {
     pub ties_before: usize,
     /// Ties closed after.
     pub ties_after: usize,
+}
+
+/// A pocket: joined to the rest by bridges only.
+#[derive(Clone, Debug, Serialize)]
+pub struct PocketFigures {
+    /// Its area.
+    pub area: String,
+    /// Lines in it.
+    pub lines: usize,
+    /// Buses in it.
+    pub buses: usize,
 }
 
 /// A choice of ties.
@@ -185,6 +202,8 @@ pub struct OutageFigures {
     pub line: String,
     /// Its area.
     pub area: String,
+    /// Pocket that it stays in after the division, counted from 1; null for a bridge.
+    pub pocket: Option<usize>,
     /// Its flow before, in MW.
     pub flow_before_mw: f64,
     /// Its flow after, in MW.
@@ -216,7 +235,9 @@ pub fn document(division: &Division) -> Document {
                 Weight::Flow => "base flow",
                 Weight::Susceptance => "susceptance",
             };
-            format!("{METHOD}; lines weighted by {weight}")
+            let tried =
+                if division.both_tried { " (the better of flow and susceptance)" } else { "" };
+            format!("{METHOD}; lines weighted by {weight}{tried}")
         }),
         base_mva: grid.base_mva,
         areas: (0..grid.areas.len()).map(|area| area_figures(division, area)).collect(),
@@ -237,6 +258,9 @@ pub fn document(division: &Division) -> Document {
         bridges_before: division.outages.bridges_before.len(),
         bridges_after: division.outages.bridges_after.len(),
         leaks: division.outages.leaks,
+        pockets: pocket_figures(division),
+        overloading_before: overloading(division, |row| row.before.as_ref()),
+        overloading_after: overloading(division, |row| row.after.as_ref()),
         outages: division.outages.rows.iter().map(|row| outage_figures(division, row)).collect(),
         outages_left_out: division.outages.left_out,
         outages_solved_again: division.outages.solved_again,
@@ -244,6 +268,23 @@ pub fn document(division: &Division) -> Document {
         too_large: fits_largest_steward(grid).err().unwrap_or_default(),
         caution: super::text::CAUTION.to_vec(),
     }
+}
+
+fn pocket_figures(division: &Division) -> Vec<PocketFigures> {
+    let pockets = division.outages.pockets.iter();
+    pockets
+        .map(|pocket| PocketFigures {
+            area: division.grid.areas[pocket.area].name.clone(),
+            lines: pocket.lines,
+            buses: pocket.buses,
+        })
+        .collect()
+}
+
+/// Outages after which a line in reach is above its rating.
+fn overloading(division: &Division, pick: fn(&OutageRow) -> Option<&Effect>) -> usize {
+    let rows = division.outages.rows.iter();
+    rows.filter(|row| pick(row).is_some_and(|effect| effect.worst_loading > FULL)).count()
 }
 
 /// `kept` where no line is above its rating after switching.
@@ -258,12 +299,14 @@ fn certainty(division: &Division) -> (&'static str, String) {
     let choices = &division.choices;
     let best = choices.best.first().map_or(0.0, |choice| choice.worst_loading);
     match choices.certainty {
-        Certainty::Enumerated => {
-            ("enumerated", format!("optimum: all {} trees of ties were evaluated", choices.evaluated))
-        }
+        Certainty::Enumerated => (
+            "enumerated",
+            format!("optimum: all {} trees of ties were evaluated", choices.evaluated),
+        ),
         Certainty::Proven => (
             "proven",
-            "optimum: proven by branch and bound, no other tree of ties has a lower worst loading".to_owned(),
+            "optimum: proven by branch and bound, no other tree of ties has a lower worst loading"
+                .to_owned(),
         ),
         Certainty::Bounded => (
             "bounded",
@@ -302,7 +345,8 @@ fn name(division: &Division, line: Option<usize>) -> Option<String> {
 }
 
 fn choice_figures(division: &Division, choice: &Choice) -> ChoiceFigures {
-    let names = |lines: &[usize]| lines.iter().filter_map(|&line| name(division, Some(line))).collect();
+    let names =
+        |lines: &[usize]| lines.iter().filter_map(|&line| name(division, Some(line))).collect();
     ChoiceFigures {
         opened: names(&choice.opened),
         kept: names(&choice.kept),
@@ -357,6 +401,7 @@ fn outage_figures(division: &Division, row: &OutageRow) -> OutageFigures {
     OutageFigures {
         line: division.grid.lines[row.line].name.clone(),
         area: division.grid.areas[row.area].name.clone(),
+        pocket: division.outages.pocket_of_line[row.line].map(|pocket| pocket + 1),
         flow_before_mw: division.before.flow_mw[row.line],
         flow_after_mw: division.after.flow_mw[row.line],
         before: row.before.as_ref().map(effect),

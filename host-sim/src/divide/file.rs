@@ -23,7 +23,9 @@ pub enum FileError {
     #[error("the grid file cannot be edited: {0}")]
     Syntax(#[from] toml_edit::TomlError),
     /// The text does not hold the grid that was divided.
-    #[error("the grid file has {found} entries of `{table}`; the grid that was divided has {expected}")]
+    #[error(
+        "the grid file has {found} entries of `{table}`; the grid that was divided has {expected}"
+    )]
     Entries {
         /// Which list.
         table: &'static str,
@@ -42,11 +44,11 @@ pub enum FileError {
 /// Errors: a text that is not that of the divided grid, or a result that fails its check.
 pub fn divided_text(source: &str, division: &Division) -> Result<String, FileError> {
     let mut document: DocumentMut = source.parse()?;
-    edit_lines(&mut document, division)?;
+    let stale = edit_lines(&mut document, division)?;
     if division.proposal.is_some() {
         edit_areas(&mut document, division)?;
     }
-    caution(&mut document, division);
+    caution(&mut document, division, stale);
     let text = document.to_string();
     parse_grid(&text, "divided.grid.toml")?;
     Ok(text)
@@ -76,7 +78,9 @@ fn entries<'a>(
     }
 }
 
-fn edit_lines(document: &mut DocumentMut, division: &Division) -> Result<(), FileError> {
+/// Open ties; returns whether an agreed flow was taken out.
+fn edit_lines(document: &mut DocumentMut, division: &Division) -> Result<bool, FileError> {
+    let mut stale = false;
     let grid = &division.grid;
     let lines = entries(document, "line", grid.lines.len())?;
     for (line, entry) in lines.into_iter().enumerate() {
@@ -85,10 +89,10 @@ fn edit_lines(document: &mut DocumentMut, division: &Division) -> Result<(), Fil
         }
         // An agreed flow of before no longer adds up with the ties that are left.
         if is_tie(grid, line) || division.proposal.is_some() {
-            entry.remove("schedule_mw");
+            stale |= entry.remove("schedule_mw").is_some();
         }
     }
-    Ok(())
+    Ok(stale)
 }
 
 /// Set a key, keeping the white space and the comment around its value.
@@ -106,7 +110,8 @@ fn edit_areas(document: &mut DocumentMut, division: &Division) -> Result<(), Fil
     for (bus, entry) in entries(document, "bus", grid.buses.len())?.into_iter().enumerate() {
         set(entry, "area", grid.areas[grid.buses[bus].area].name.as_str().into());
     }
-    let first = document.get("area").and_then(Item::as_array_of_tables).and_then(|list| list.get(0));
+    let first =
+        document.get("area").and_then(Item::as_array_of_tables).and_then(|list| list.get(0));
     let (position, decor) = match first {
         Some(table) => (table.position(), Some(table.decor().clone())),
         None => (None, None),
@@ -130,10 +135,14 @@ fn edit_areas(document: &mut DocumentMut, division: &Division) -> Result<(), Fil
 }
 
 /// Put the caution above everything else.
-fn caution(document: &mut DocumentMut, division: &Division) {
+fn caution(document: &mut DocumentMut, division: &Division, stale: bool) {
     let mut head = String::from("# Divided by hedgerow. ");
     let opened = division.price.opened.len();
-    let _ = writeln!(head, "{opened} of {} ties are left open (`closed = false`).", division.choices.ties.len());
+    let _ = writeln!(
+        head,
+        "{opened} of {} ties are left open (`closed = false`).",
+        division.choices.ties.len()
+    );
     for sentence in text::CAUTION {
         for line in wrapped(sentence, 92) {
             let _ = writeln!(head, "# {line}");
@@ -142,7 +151,13 @@ fn caution(document: &mut DocumentMut, division: &Division) {
     if let Some(proposal) = &division.proposal {
         let _ = writeln!(head, "# The {} areas were proposed by the program.", proposal.area_count);
     }
-    let _ = writeln!(head, "# Agreed tie flows (`schedule_mw`) were taken out: a tree of ties has one flow only.\n#");
+    if stale {
+        let _ = writeln!(
+            head,
+            "# Agreed tie flows (`schedule_mw`) were taken out: a tree of ties has one flow only."
+        );
+    }
+    head.push_str("#\n");
     let Some(mut key) = document.as_table_mut().key_mut("format") else {
         return;
     };

@@ -44,8 +44,9 @@ use propose::{Proposal, Weight};
 pub struct Settings {
     /// Number of areas to propose; none = the file's areas.
     pub areas: Option<usize>,
-    /// What makes a line worth keeping inside an area.
-    pub weight: Weight,
+    /// What makes a line worth keeping inside a proposed area; none = try both
+    /// and take the areas whose best choice of ties loads the lines less.
+    pub weight: Option<Weight>,
     /// Up to this many trees of ties, each is evaluated.
     pub trees_max: u128,
     /// Steps (a line times a tie) that the proof by splitting may take.
@@ -59,8 +60,8 @@ impl Default for Settings {
     fn default() -> Self {
         Self {
             areas: None,
-            weight: Weight::Flow,
-            trees_max: 20_000,
+            weight: None,
+            trees_max: 100_000,
             work_max: 1_500_000_000,
             outages_max: 4_000,
         }
@@ -69,6 +70,9 @@ impl Default for Settings {
 
 /// Choices that are listed at most.
 pub const LISTED_CHOICES: usize = 20;
+
+/// Guesses at a higher bound when splitting has not ended.
+const GUESSES: u64 = 5;
 
 /// A line counts as above its rating from here on.
 pub const FULL: f64 = 1.001;
@@ -146,6 +150,8 @@ pub struct Division {
     pub grid: Grid,
     /// How the areas were proposed; none = the file's.
     pub proposal: Option<Proposal>,
+    /// Whether the proposal is the better one of both weights.
+    pub both_tried: bool,
     /// Flows before.
     pub before: BaseCase,
     /// Flows after.
@@ -171,22 +177,19 @@ pub fn divide(
     go_on: &mut dyn FnMut(f64) -> bool,
 ) -> Result<Division, DivideError> {
     let before = BaseCase::of_file(grid)?;
-    let proposal = match settings.areas {
-        Some(count) => Some(propose::propose(grid, &before, count, settings.weight)?),
-        None if grid.areas.len() < 2 => return Err(DivideError::OneArea),
-        None => None,
-    };
-    let grid = match &proposal {
-        Some(proposal) => with_areas(grid, &proposal.area_of_bus, proposal.area_count),
-        None => grid.clone(),
-    };
     let mut stopped = false;
     let mut watch = |share: f64| {
         stopped |= !go_on(share);
         !stopped
     };
-    watch(0.05);
-    let choices = choose(&grid, &before, settings, &mut |share| watch(0.05 + 0.45 * share))?;
+    let (grid, proposal, choices) = match settings.areas {
+        Some(count) => proposed(grid, &before, count, settings, &mut watch)?,
+        None if grid.areas.len() < 2 => return Err(DivideError::OneArea),
+        None => {
+            let choices = choose(grid, &before, settings, &mut |share| watch(0.5 * share))?;
+            (grid.clone(), None, choices)
+        }
+    };
     let mut closed = before.closed.clone();
     for &line in choices.best.first().map_or(&[][..], |choice| &choice.opened) {
         closed[line] = false;
@@ -196,7 +199,45 @@ pub fn divide(
         watch(0.5 + 0.5 * share)
     })?;
     let price = price::price(&grid, &before, &after);
-    Ok(Division { grid, proposal, before, after, choices, outages, price, stopped })
+    Ok(Division {
+        both_tried: settings.weight.is_none(),
+        grid,
+        proposal,
+        before,
+        after,
+        choices,
+        outages,
+        price,
+        stopped,
+    })
+}
+
+/// Propose areas and choose their ties; of two proposals the one that loads the lines less.
+fn proposed(
+    grid: &Grid,
+    before: &BaseCase,
+    count: usize,
+    settings: &Settings,
+    watch: &mut dyn FnMut(f64) -> bool,
+) -> Result<(Grid, Option<Proposal>, Choices), DivideError> {
+    let weights = match settings.weight {
+        Some(weight) => vec![weight],
+        None => vec![Weight::Flow, Weight::Susceptance],
+    };
+    let part = 0.5 / weights.len() as f64;
+    let mut best: Option<(Grid, Option<Proposal>, Choices)> = None;
+    for (tried, &weight) in weights.iter().enumerate() {
+        let proposal = propose::propose(grid, before, count, weight)?;
+        let drawn = with_areas(grid, &proposal.area_of_bus, proposal.area_count);
+        let choices =
+            choose(&drawn, before, settings, &mut |share| watch(part * (tried as f64 + share)))?;
+        let loading =
+            |choices: &Choices| choices.best.first().map_or(f64::INFINITY, |c| c.worst_loading);
+        if best.as_ref().is_none_or(|known| loading(&choices) < loading(&known.2)) {
+            best = Some((drawn, Some(proposal), choices));
+        }
+    }
+    best.ok_or(DivideError::OneArea)
 }
 
 /// Choose the ties to leave open in a grid with areas.
@@ -221,7 +262,10 @@ pub fn choose(
         evaluated: 0,
         within_ratings: None,
         best: Vec::new(),
-        certainty: Certainty::BestFound,
+        certainty: match relaxed.bound > 0.0 {
+            true => Certainty::Bounded,
+            false => Certainty::BestFound,
+        },
         bound: relaxed.bound,
         quick_loading,
     };
@@ -233,7 +277,8 @@ pub fn choose(
             split(&problem, quick, &base_mw, settings, &mut choices, go_on)
         }
     };
-    choices.best = found.iter().take(LISTED_CHOICES).map(|found| as_choice(&problem, found)).collect();
+    choices.best =
+        found.iter().take(LISTED_CHOICES).map(|found| as_choice(&problem, found)).collect();
     Ok(choices)
 }
 
@@ -280,8 +325,11 @@ fn split(
     let Some(start) = found.first().cloned() else {
         return found;
     };
-    let outcome =
-        branch::search(problem, start, base_mw, choices.bound, settings.work_max, go_on);
+    let outcome = branch::search(problem, start, base_mw, choices.bound, settings.work_max, go_on);
+    let outcome = match outcome.finished {
+        true => outcome,
+        false => raise_bound(problem, outcome.best, base_mw, settings, choices, go_on),
+    };
     let best = outcome.best.worst.loading;
     choices.certainty = match (outcome.finished, choices.bound > 0.0) {
         (true, _) => Certainty::Proven,
@@ -295,6 +343,45 @@ fn split(
     found.insert(0, outcome.best);
     choices.evaluated = found.len() as u64;
     found
+}
+
+/// Raise the bound: a search for anything below a guess that ends without a find proves the guess.
+///
+/// Cost: as much again as the search itself, at most.
+fn raise_bound(
+    problem: &TieProblem,
+    mut best: Found,
+    base_mw: &[f64],
+    settings: &Settings,
+    choices: &mut Choices,
+    go_on: &mut dyn FnMut(f64) -> bool,
+) -> branch::Outcome {
+    let work_max = settings.work_max / GUESSES;
+    let (mut low, mut high) = (choices.bound, best.worst.loading);
+    for _ in 0..GUESSES {
+        let guess = if low > 0.0 { (low * high).sqrt() } else { 0.5 * high };
+        let mut start = best.clone();
+        start.worst.loading = guess;
+        let outcome = branch::search(problem, start, base_mw, low, work_max, go_on);
+        if outcome.best.worst.loading < guess {
+            best = outcome.best;
+            (low, high) = if outcome.finished {
+                (best.worst.loading, low)
+            } else {
+                (low, best.worst.loading)
+            };
+        } else if outcome.finished {
+            low = guess;
+        } else {
+            high = guess;
+        }
+        if low >= high {
+            break;
+        }
+    }
+    choices.bound = low;
+    let finished = low >= best.worst.loading;
+    branch::Outcome { best, finished }
 }
 
 fn as_choice(problem: &TieProblem, found: &Found) -> Choice {

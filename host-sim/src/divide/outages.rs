@@ -9,12 +9,14 @@
 //!
 //! Data flow: lines inside areas, largest base flow first -> factors -> rows.
 
+use std::collections::BTreeSet;
+
 use super::DivideError;
 use super::base::{BaseCase, is_tie};
 use super::problem::area_grid;
 use crate::case::model::Grid;
 use crate::grid::dc::DcNetwork;
-use crate::grid::graph::blocks;
+use crate::grid::graph::{Blocks, blocks};
 use crate::grid::line_ends;
 use crate::grid::sensitivity::{Outage, Sensitivity};
 
@@ -47,6 +49,17 @@ pub struct OutageRow {
     pub after: Option<Effect>,
 }
 
+/// A pocket of the divided grid: a block of more than one line, joined to the rest by bridges only.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Pocket {
+    /// The area it lies in (of its first line).
+    pub area: usize,
+    /// Lines in it.
+    pub lines: usize,
+    /// Buses in it.
+    pub buses: usize,
+}
+
 /// The pockets of a divided grid and the outages inside them.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Outages {
@@ -58,6 +71,10 @@ pub struct Outages {
     pub bridges_before: Vec<usize>,
     /// The same after it.
     pub bridges_after: Vec<usize>,
+    /// Pockets of the divided grid, in the order of their first lines.
+    pub pockets: Vec<Pocket>,
+    /// Pocket of each line; none for open lines and bridges.
+    pub pocket_of_line: Vec<Option<usize>>,
     /// Blocks of the divided grid that reach over an area's border; closed ties apart.
     pub leaks: usize,
     /// Outages that were solved again from scratch on the divided grid.
@@ -83,7 +100,9 @@ pub fn compare(
     let bridges = |bridge: &[bool]| (0..bridge.len()).filter(|&line| bridge[line]).collect();
     let mut inside: Vec<usize> =
         (0..ends.len()).filter(|&line| after.closed[line] && !is_tie(grid, line)).collect();
-    inside.sort_by(|&a, &b| before.flow_mw[b].abs().total_cmp(&before.flow_mw[a].abs()).then(a.cmp(&b)));
+    inside.sort_by(|&a, &b| {
+        before.flow_mw[b].abs().total_cmp(&before.flow_mw[a].abs()).then(a.cmp(&b))
+    });
     let all = inside.len();
     inside.truncate(most);
     let whole = Sensitivity::new(grid, &before.closed)?;
@@ -107,7 +126,10 @@ pub fn compare(
     let outside = |row: &OutageRow| row.before.map_or(-1.0, |effect| effect.outside_mw);
     rows.sort_by(|a, b| outside(b).total_cmp(&outside(a)).then(a.line.cmp(&b.line)));
     let (solved_again, outside_again_mw) = solve_again(grid, after, &rows)?;
+    let (pockets, pocket_of_line) = pockets(grid, &blocks_after);
     Ok(Outages {
+        pockets,
+        pocket_of_line,
         left_out: all - rows.len(),
         rows,
         bridges_before: bridges(&blocks_before.is_bridge),
@@ -116,6 +138,30 @@ pub fn compare(
         solved_again,
         outside_again_mw,
     })
+}
+
+/// Number the blocks of more than one line by their first line.
+fn pockets(grid: &Grid, blocks: &Blocks) -> (Vec<Pocket>, Vec<Option<usize>>) {
+    let mut number: Vec<Option<usize>> = vec![None; blocks.count];
+    let mut members: Vec<BTreeSet<usize>> = Vec::new();
+    let mut pockets: Vec<Pocket> = Vec::new();
+    let mut of_line = vec![None; grid.lines.len()];
+    for (line, block) in blocks.block_of_edge.iter().enumerate() {
+        let Some(block) = block.filter(|_| !blocks.is_bridge[line]) else { continue };
+        let data = &grid.lines[line];
+        let pocket = *number[block].get_or_insert(pockets.len());
+        if pocket == pockets.len() {
+            pockets.push(Pocket { area: grid.buses[data.from].area, lines: 0, buses: 0 });
+            members.push(BTreeSet::new());
+        }
+        pockets[pocket].lines += 1;
+        members[pocket].extend([data.from, data.to]);
+        of_line[line] = Some(pocket);
+    }
+    for (pocket, members) in pockets.iter_mut().zip(members) {
+        pocket.buses = members.len();
+    }
+    (pockets, of_line)
 }
 
 /// Blocks with lines in more than one area, or a tie beside other lines.
@@ -143,7 +189,8 @@ fn effect_before(
     let Outage::Factors(factors) = whole.outage(line)? else {
         return Ok(None);
     };
-    let mut effect = Effect { outside_mw: 0.0, outside_line: None, worst_loading: 0.0, worst_line: None };
+    let mut effect =
+        Effect { outside_mw: 0.0, outside_line: None, worst_loading: 0.0, worst_line: None };
     for (other, factor) in factors.iter().enumerate() {
         let change_mw = factor * base.flow_mw[line];
         let data = &grid.lines[other];
@@ -177,7 +224,12 @@ impl AreaOutages {
         Ok(Self { lines, sensitivity })
     }
 
-    fn effect(&self, grid: &Grid, base: &BaseCase, line: usize) -> Result<Option<Effect>, DivideError> {
+    fn effect(
+        &self,
+        grid: &Grid,
+        base: &BaseCase,
+        line: usize,
+    ) -> Result<Option<Effect>, DivideError> {
         let Ok(local) = self.lines.binary_search(&line) else {
             return Ok(None);
         };
@@ -195,7 +247,11 @@ impl AreaOutages {
 }
 
 /// Solve the first outages afresh; returns how many and the largest change outside in MW.
-fn solve_again(grid: &Grid, after: &BaseCase, rows: &[OutageRow]) -> Result<(usize, f64), DivideError> {
+fn solve_again(
+    grid: &Grid,
+    after: &BaseCase,
+    rows: &[OutageRow],
+) -> Result<(usize, f64), DivideError> {
     let mut largest_mw = 0.0_f64;
     let mut count = 0;
     for row in rows.iter().filter(|row| row.after.is_some()).take(SOLVED_AGAIN) {

@@ -40,7 +40,7 @@ pub fn page(division: &Division, d: &Document) -> String {
                     (areas(d))
                     (choices(d))
                     section #before { h2 { "Before" } p.note { "Labels are loadings: flow over continuous rating. Arrows point the way the power flows." } (PreEscaped(before)) }
-                    section #map { h2 { "After" } p.note { "Open ties are dashed." } (PreEscaped(after)) }
+                    section #map { h2 { "After" } p.note { "Open ties are dashed." @if division.grid.buses.len() > MAPPED_BUSES { " A grid of this size is drawn by its areas and ties." } } (PreEscaped(after)) }
                     (price(d))
                     (outages(d))
                     footer { p { "Hedgerow " (env!("CARGO_PKG_VERSION")) ". The same grid and settings give this page byte for byte." } }
@@ -76,14 +76,15 @@ pub fn maps(division: &Division) -> (String, String) {
 fn by_area(division: &Division) -> (Grid, Vec<usize>) {
     let grid = &division.grid;
     let ties = division.choices.ties.clone();
-    let bus = |(area, data): (usize, &crate::case::model::Area)| {
+    let bus = |area: usize| {
         let own: Vec<&Bus> = grid.buses.iter().filter(|bus| bus.area == area).collect();
         let mean = |pick: fn((f64, f64)) -> f64| {
             let sum: Option<f64> = own.iter().map(|bus| bus.position.map(pick)).sum();
             sum.map(|sum| sum / own.len().max(1) as f64)
         };
         Bus {
-            name: data.name.clone(),
+            // The area's own name stands beside it already.
+            name: String::new(),
             area,
             load_mw: 0.0,
             load_damping: 0.0,
@@ -97,7 +98,7 @@ fn by_area(division: &Division) -> (Grid, Vec<usize>) {
         line
     });
     let small = Grid {
-        buses: grid.areas.iter().enumerate().map(bus).collect(),
+        buses: (0..grid.areas.len()).map(bus).collect(),
         lines: lines.collect(),
         units: Vec::new(),
         feeders: Vec::new(),
@@ -244,7 +245,7 @@ fn price(d: &Document) -> Markup {
             }
             h3 { "What the trip of each closed tie would split" }
             p.note { "Surplus is what each side would be out of balance by. Room is what its available units may rise and fall within their normal range." }
-            table {
+            table style="font-size:12.5px" {
                 thead { tr { th { "Tie" } th.num { "Before [MW]" } th.num { "After [MW]" } th.num { "Loading" } th { "Side" } th.num { "Surplus [MW]" } th.num { "Inertia [MW s]" } th.num { "Reserve [MW]" } th.num { "Room [MW]" } th { "Largest unit [MW]" } th { "Room" } } }
                 tbody { @for t in &d.closed { (sides(t)) } }
             }
@@ -276,13 +277,24 @@ fn outages(d: &Document) -> Markup {
                 @if d.outages.len() > ROWS { "The first " (ROWS) " of " (d.outages.len()) "; all are in outages.csv. " }
                 @if d.outages_left_out > 0 { (d.outages_left_out) " lines with small base flow were left out." }
             }
+            p { "Outages after which a line is above its rating: " (d.overloading_before) " before, " (d.overloading_after) " after." }
+            h3 { "Pockets" }
+            p.note { "Joined to the rest by bridges only: an outage inside one leaves all flows outside it alone." }
+            table {
+                thead { tr { th.num { "Pocket" } th { "Area" } th.num { "Buses" } th.num { "Lines" } } }
+                tbody { @for (index, pocket) in d.pockets.iter().take(ROWS).enumerate() { tr {
+                    td.num { (index + 1) } td { (pocket.area) } td.num { (pocket.buses) } td.num { (pocket.lines) }
+                } } }
+            }
+            @if d.pockets.len() > ROWS { p.note { "and " (d.pockets.len() - ROWS) " more in result.json." } }
+            h3 { "Outages" }
             table {
                 thead {
-                    tr { th rowspan="2" { "Line" } th rowspan="2" { "Area" } th colspan="3" { "Before" } th colspan="3" { "After" } }
+                    tr { th rowspan="2" { "Line" } th rowspan="2" { "Area" } th.num rowspan="2" { "Pocket" } th colspan="3" { "Before" } th colspan="3" { "After" } }
                     tr { th.num { "Outside [MW]" } th { "on" } th.num { "Worst" } th.num { "Outside [MW]" } th { "on" } th.num { "Worst" } }
                 }
                 tbody { @for o in d.outages.iter().take(ROWS) { tr {
-                    th scope="row" { (o.line) } td { (o.area) } (effect(&o.before)) (effect(&o.after))
+                    th scope="row" { (o.line) } td { (o.area) } td.num { @match o.pocket { Some(pocket) => { (pocket) } None => { "-" } } } (effect(&o.before)) (effect(&o.after))
                 } } }
             }
         }

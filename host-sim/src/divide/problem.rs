@@ -156,17 +156,26 @@ impl TieProblem {
     ///
     /// Cost: lines that answer to ties, times closed ties of their area.
     pub fn worst(&self, tree: &[usize]) -> Worst {
+        self.worst_and_pressure(tree).0
+    }
+
+    /// Worst loading, and the sum of the eighth powers of all loadings: which of
+    /// two choices with the same worst line strains the others less.
+    pub fn worst_and_pressure(&self, tree: &[usize]) -> (Worst, f64) {
         let flow_mw = self.tree_flows_mw(tree);
         let mut worst = Worst { loading: 0.0, line: None };
         let mut take = |loading: f64, line: Option<usize>| {
-            if loading > worst.loading {
-                worst = Worst { loading, line };
+            // Of lines in series, equal but for rounding, the first is named.
+            if loading > worst.loading * (1.0 + 1e-12) {
+                worst.line = line;
             }
+            worst.loading = worst.loading.max(loading);
         };
         for (&tie, flow) in tree.iter().zip(&flow_mw) {
             take(flow.abs() / self.ties[tie].rating_mw, Some(self.ties[tie].line));
         }
         let mut loading = Vec::new();
+        let mut pressure = 0.0;
         for (area, flows) in self.areas.iter().enumerate() {
             take(flows.fixed.0, flows.fixed.1);
             loading.clear();
@@ -184,8 +193,15 @@ impl TieProblem {
             for (value, &line) in loading.iter().zip(&flows.lines) {
                 take(value.abs(), Some(line));
             }
+            pressure += loading.iter().map(|value| (value * value).powi(4)).sum::<f64>();
         }
-        worst
+        (worst, pressure)
+    }
+
+    /// Steps (a line times a tie) that one evaluation takes, about.
+    pub fn evaluation_work(&self) -> u64 {
+        let lines: usize = self.areas.iter().map(|area| area.lines.len()).sum();
+        3 * lines as u64 + 10 * self.surplus_mw.len() as u64
     }
 
     /// No tie of any tree carries more than this, in MW.
@@ -200,7 +216,11 @@ impl TieProblem {
 }
 
 /// The buses and internal lines in service of one area, as a grid, with the lines' indices.
-pub(super) fn area_grid(grid: &Grid, closed: &[bool], area: usize) -> (Grid, Vec<usize>, Vec<usize>) {
+pub(super) fn area_grid(
+    grid: &Grid,
+    closed: &[bool],
+    area: usize,
+) -> (Grid, Vec<usize>, Vec<usize>) {
     let mut local = vec![usize::MAX; grid.buses.len()];
     let mut buses = Vec::new();
     for bus in (0..grid.buses.len()).filter(|&bus| grid.buses[bus].area == area) {

@@ -9,8 +9,7 @@ use crate::record::FinalState;
 
 use super::topology::{BusRole, Topology};
 
-/// Curvature of tie and mid-angle deviations at each end, per pu squared (the stewards' own).
-pub(super) const TIE_CURVATURE: f64 = 0.05;
+pub(super) use crate::charter::TIE_CURVATURE;
 
 /// Which sheds the programme may choose.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]

@@ -2,6 +2,8 @@
 
 use crate::case::model::{Grid, Happening};
 
+pub use crate::report::rung_word;
+
 /// What happens, in words, for events that are not the plant's to tell.
 pub fn sentence(grid: &Grid, what: &Happening) -> String {
     let area = |index: usize| &grid.areas[index].name;
@@ -31,15 +33,5 @@ pub fn sentence(grid: &Grid, what: &Happening) -> String {
         Happening::UnitTrip { unit } | Happening::UnitReturn { unit } => {
             format!("unit {} is switched", grid.units[*unit].name)
         }
-    }
-}
-
-/// Name of a rung.
-pub fn rung_word(rung: u8) -> &'static str {
-    match rung {
-        0 => "keep",
-        1 => "lean",
-        2 => "stretch",
-        _ => "shed",
     }
 }

@@ -82,15 +82,7 @@ pub fn play() -> Play {
             assumed_load_damping: 1.0,
             help_hops: 4,
         },
-        links: Links {
-            delay_ticks: 0,
-            jitter_ticks: 0,
-            loss: 0.0,
-            duplicate: 0.0,
-            reorder: 0.0,
-            corrupt: 0.0,
-            plant_too: false,
-        },
+        links: crate::link::FAULTLESS,
         events: vec![Event { at_s: 1.0, what: Happening::LineTrip { line: 0 } }],
     }
 }

@@ -94,3 +94,20 @@ pub struct Stop {
     /// Tick at which the order was given.
     pub tick: u32,
 }
+
+/// What one tick cost; sent after the status of that tick by builds that measure themselves.
+///
+/// It repeats the counter of the frame before it, so that a build that measures
+/// counts its other frames as one that does not.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+#[cfg_attr(feature = "defmt", derive(defmt::Format))]
+pub struct Effort {
+    /// Tick of the measurements that were answered.
+    pub tick: u32,
+    /// Instructions executed since the tick before, reading and writing frames included.
+    pub instructions: u32,
+    /// Deepest stack seen since boot, in bytes.
+    pub stack_bytes: u32,
+    /// Whether the scaling was built again in this tick.
+    pub rebuilt: bool,
+}

@@ -10,7 +10,7 @@ pub mod packed;
 pub mod plant;
 pub mod steward;
 
-pub use housekeeping::{CharterPart, CharterState, Hello, Refusal, Role, Run, Stop};
+pub use housekeeping::{CharterPart, CharterState, Effort, Hello, Refusal, Role, Run, Stop};
 pub use neighbour::TieTerms;
 pub use packed::{Bits, Floats, Reading, Readings};
 pub use plant::{BasePoint, Measurements, Restore, Schedule};
@@ -29,6 +29,8 @@ pub enum Message<'a> {
     Run(Run),
     /// Stop acting.
     Stop(Stop),
+    /// What a tick cost.
+    Effort(Effort),
     /// Everything the plant measured in one tick.
     Measurements(Measurements<'a>),
     /// A tie's agreed flow.
@@ -104,6 +106,7 @@ ids! {
     0x03 => CharterState,
     0x04 => Run,
     0x05 => Stop,
+    0x06 => Effort,
     0x10 => Measurements,
     0x11 => Schedule,
     0x12 => BasePoint,
@@ -127,6 +130,7 @@ impl Message<'_> {
             | Message::CharterState(_)
             | Message::Run(_)
             | Message::Stop(_)
+            | Message::Effort(_)
             | Message::Schedule(_)
             | Message::BasePoint(_)
             | Message::Restore(_)

@@ -8,7 +8,7 @@ use proptest::collection::vec;
 use proptest::prelude::*;
 
 /// Number of kinds of message.
-const KINDS: u8 = 13;
+const KINDS: u8 = 14;
 
 /// What a message of any kind is made of.
 #[derive(Clone, Debug)]
@@ -102,6 +102,12 @@ impl Parts {
             }),
             10 => Message::Status(self.status()),
             11 => Message::ProofPart(self.proof_part()),
+            12 => Message::Effort(Effort {
+                tick,
+                instructions: ramp_ticks,
+                stack_bytes: self.large[2],
+                rebuilt: a % 2 == 1,
+            }),
             _ => Message::TieTerms(self.tie_terms()),
         }
     }

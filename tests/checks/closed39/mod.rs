@@ -104,7 +104,48 @@ fn every_case_on_39_buses_ends_at_the_least_rung_within_limits() {
         }
     }
     println!("{} cases, {} surprises", results.len(), surprises.len());
+    hold_summary(&cases, &results);
     assert!(surprises.is_empty(), "\n{}", surprises.join("\n"));
+}
+
+/// The whole set's summary, rounded, is a committed table; `HEDGEROW_BLESS` writes it anew.
+fn hold_summary(cases: &[Case], results: &[(usize, Ended)]) {
+    let whole =
+        std::env::var_os("HEDGEROW_LONG").is_some() && std::env::var_os("HEDGEROW_CASE").is_none();
+    if !whole {
+        return;
+    }
+    let mut table = String::from(
+        "# 39 buses: cases per grid and links, how many pass, highest rung needed (keep lean stretch shed beyond),\n# median time to settle in s, lowest frequency in Hz. Written by the test `closed39`.\n",
+    );
+    for shape in SHAPES {
+        for links in ["ideal", "hostile"] {
+            let of = |index: &usize| cases[*index].shape == shape && cases[*index].links == links;
+            let ended: Vec<&Ended> =
+                results.iter().filter(|(index, _)| of(index)).map(|(_, ended)| ended).collect();
+            let mut rungs = [0; 5];
+            for e in &ended {
+                let rung = usize::from(*e.least.iter().max().unwrap_or(&0));
+                rungs[if e.possible { rung } else { 4 }] += 1;
+            }
+            let mut settled: Vec<f64> = ended.iter().map(|e| e.settled_s).collect();
+            settled.sort_by(f64::total_cmp);
+            let lowest = ended.iter().map(|e| e.lowest_hz).fold(f64::INFINITY, f64::min);
+            table.push_str(&format!(
+                "{}/{links} cases {} pass {} rungs {rungs:?} settled {:.0} lowest {lowest:.1}\n",
+                shape.word(),
+                ended.len(),
+                ended.iter().filter(|e| e.passes()).count(),
+                settled[settled.len() / 2],
+            ));
+        }
+    }
+    println!("{table}");
+    let path = concat!(env!("CARGO_MANIFEST_DIR"), "/data/39bus_summary.txt");
+    if std::env::var_os("HEDGEROW_BLESS").is_some() {
+        std::fs::write(path, &table).unwrap();
+    }
+    assert_eq!(std::fs::read_to_string(path).unwrap_or_default(), table);
 }
 
 fn line(name: &str, ended: &Ended) -> String {

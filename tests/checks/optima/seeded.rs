@@ -71,7 +71,8 @@ fn table(outcomes: &[Outcome], looks: &[usize]) {
         println!("{look:>6} iterations  set-point {}", column(|off| off.point));
         println!("{look:>6} iterations  violation {}", column(|off| off.violation));
         println!("{look:>6} iterations  cost gap  {}", column(|off| off.cost));
-        for o in outcomes.iter().filter(|o| o.offs[place].point > 1e-3) {
+        let late = outcomes.iter().filter(|o| *look >= 1000 && o.offs[place].point > 1e-3);
+        for o in late {
             println!("    above: seed {} rung {} {:?}", o.seed, o.rung, o.offs[place]);
         }
     }

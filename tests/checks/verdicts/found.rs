@@ -13,10 +13,13 @@ const MUST: f64 = 0.005;
 /// Iterations per tick and ticks allowed.
 const BUDGET: (usize, usize) = (50, 500);
 
+/// Class, family, tick at which it was found.
+type Latency = (usize, usize, Option<usize>);
+
 /// Source: J. Farkas, "Theorie der einfachen Ungleichungen", 1902, held against linear programmes by clarabel 0.11; recomputed; all of 0.5 MW and more within 500 ticks of 50 iterations.
 #[test]
 fn everything_impossible_by_half_a_megawatt_is_found() {
-    let mut latencies: Vec<(usize, usize, Option<usize>)> = vec![];
+    let mut latencies: Vec<Latency> = vec![];
     let mut missed = vec![];
     for pair in pairs(120, 1300) {
         let programme = &pair.impossible;
@@ -40,9 +43,9 @@ fn everything_impossible_by_half_a_megawatt_is_found() {
     assert!(missed.is_empty(), "{} missed: {missed:?}", missed.len());
 }
 
-fn table(latencies: &[(usize, usize, Option<usize>)]) {
+fn table(latencies: &[Latency]) {
     println!("ticks of {} iterations until found: half, 90 %, 99 %, worst, missed", BUDGET.0);
-    let line = |name: String, pick: &dyn Fn(&(usize, usize, Option<usize>)) -> bool| {
+    let line = |name: String, pick: &dyn Fn(&Latency) -> bool| {
         let all: Vec<_> = latencies.iter().filter(|l| pick(l)).collect();
         let mut ticks: Vec<usize> = all.iter().filter_map(|l| l.2).collect();
         ticks.sort_unstable();

@@ -2,7 +2,7 @@
 
 use super::pairs;
 use hedgerow_tests::areas::Chance;
-use hedgerow_tests::board::{Board, CLAMP};
+use hedgerow_tests::board::Board;
 use hedgerow_tests::border::Border;
 use hedgerow_tests::detector::{Facts, trial};
 use hedgerow_tests::programme::Programme;
@@ -45,7 +45,7 @@ fn verdicts(pair: &Border, programme: &Programme, other: &Programme) -> Vec<(&'s
     warm.run(2000);
     warm.go_on_with(programme);
     all.push(("warm start", verdict(&mut warm, programme, 20)));
-    assert!(warm.dual_max() <= CLAMP);
+    assert!(warm.dual_max() <= warm.clamp());
     all
 }
 

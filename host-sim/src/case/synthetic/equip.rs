@@ -14,7 +14,7 @@ use crate::case::model::{
 const LOADED: f64 = 0.65;
 /// Share of the buses that have a unit.
 const FED: f64 = 0.18;
-/// Largest surplus or deficit of an area as a share of its load.
+/// Largest surplus or deficit of an area as a share of its load, up to 30 buses.
 const SURPLUS: f64 = 0.2;
 /// Share of the loaded buses that have a feeder, and of their load that it carries.
 const FEEDERS: (f64, f64) = (0.4, 0.3);
@@ -26,8 +26,8 @@ pub(super) fn equip(grid: &mut Grid, draw: &mut Draw) {
     let total_mw: f64 = grid.buses.iter().map(|bus| bus.load_mw).sum();
     let scale = total_mw / wanted_mw.iter().sum::<f64>();
     wanted_mw.iter_mut().for_each(|target| *target *= scale);
-    for area in 0..grid.areas.len() {
-        feed(grid, area, wanted_mw[area], draw);
+    for (area, wanted_mw) in wanted_mw.into_iter().enumerate() {
+        feed(grid, area, wanted_mw, draw);
     }
     // Base points are rounded to a tenth; the last unit takes up what that leaves.
     let given_mw: f64 = grid.units.iter().map(|unit| unit.base_mw).sum();
@@ -57,15 +57,17 @@ fn load(grid: &mut Grid, draw: &mut Draw) {
 fn area_targets_mw(grid: &Grid, draw: &mut Draw) -> Vec<f64> {
     (0..grid.areas.len())
         .map(|area| {
-            let own = grid.buses.iter().filter(|bus| bus.area == area);
-            own.map(|bus| bus.load_mw).sum::<f64>() * draw.within(1.0 - SURPLUS, 1.0 + SURPLUS)
+            let own = || grid.buses.iter().filter(|bus| bus.area == area);
+            let share = SURPLUS * (30.0 / own().count() as f64).sqrt().min(1.0);
+            own().map(|bus| bus.load_mw).sum::<f64>() * draw.within(1.0 - share, 1.0 + share)
         })
         .collect()
 }
 
 /// Share an area's generation among units at buses of its own.
 fn feed(grid: &mut Grid, area: usize, target_mw: f64, draw: &mut Draw) {
-    let own: Vec<usize> = (0..grid.buses.len()).filter(|&bus| grid.buses[bus].area == area).collect();
+    let own: Vec<usize> =
+        (0..grid.buses.len()).filter(|&bus| grid.buses[bus].area == area).collect();
     let mut at: Vec<usize> = own.iter().copied().filter(|_| draw.share() < FED).collect();
     if at.is_empty() {
         at.push(own[draw.below(own.len())]);
@@ -128,7 +130,7 @@ fn feeders(grid: &mut Grid, draw: &mut Draw) {
         let (area, load_mw) = (grid.buses[bus].area, grid.buses[bus].load_mw);
         let drawn = draw.share() < FEEDERS.0;
         let feeder_mw = rounded(load_mw * FEEDERS.1, 1);
-        if feeder_mw < 1.0 || !(drawn || !served[area]) {
+        if feeder_mw < 1.0 || (served[area] && !drawn) {
             continue;
         }
         served[area] = true;

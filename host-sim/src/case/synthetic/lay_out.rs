@@ -94,15 +94,19 @@ fn join_inside(grid: &mut Grid, own: std::ops::Range<usize>, km: f64, draw: &mut
     let mut joined = std::collections::BTreeSet::new();
     let start = own.start;
     for bus in own.clone().skip(1) {
-        let near = (start..bus).min_by(|&a, &b| apart(grid, bus, a).total_cmp(&apart(grid, bus, b)));
+        let near =
+            (start..bus).min_by(|&a, &b| apart(grid, bus, a).total_cmp(&apart(grid, bus, b)));
         let near = near.unwrap_or(start);
         joined.insert((near, bus));
         join(grid, near, bus, km, draw);
     }
     let mut missing: Vec<(f64, usize, usize)> = Vec::new();
     for bus in own.clone() {
-        let mut near: Vec<(f64, usize)> =
-            own.clone().filter(|&other| other != bus).map(|other| (apart(grid, bus, other), other)).collect();
+        let mut near: Vec<(f64, usize)> = own
+            .clone()
+            .filter(|&other| other != bus)
+            .map(|other| (apart(grid, bus, other), other))
+            .collect();
         let nth = NEAR.min(near.len().saturating_sub(1));
         if nth > 0 {
             near.select_nth_unstable_by(nth, |a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1)));
@@ -154,7 +158,8 @@ fn join_areas(
     let count = 2 + draw.below(3);
     let mut pairs: Vec<(f64, usize, usize)> = Vec::new();
     for one in a {
-        let nearest = b.clone().min_by(|&x, &y| apart(grid, one, x).total_cmp(&apart(grid, one, y)));
+        let nearest =
+            b.clone().min_by(|&x, &y| apart(grid, one, x).total_cmp(&apart(grid, one, y)));
         if let Some(other) = nearest {
             pairs.push((apart(grid, one, other), one, other));
         }
@@ -163,7 +168,9 @@ fn join_areas(
     // Every second of the closest pairs: ties that stand apart are of more use.
     let mut ends = std::collections::BTreeSet::new();
     let spread: Vec<_> = pairs.iter().step_by(2).chain(pairs.iter().skip(1).step_by(2)).collect();
-    for &&(_, one, other) in spread.iter().filter(|(_, one, other)| ends.insert(*one) & ends.insert(*other)).take(count) {
+    for &&(_, one, other) in
+        spread.iter().filter(|(_, one, other)| ends.insert(*one) & ends.insert(*other)).take(count)
+    {
         join(grid, one, other, km, draw);
     }
 }

@@ -16,7 +16,11 @@ pub(super) fn write(grid: &Grid, buses: usize, areas: usize, seed: u64) -> Strin
         let _ = write!(out, "\n[[area]]\nname = \"{}\"\n", area.name);
     }
     for bus in &grid.buses {
-        let _ = write!(out, "\n[[bus]]\nname = \"{}\"\narea = \"{}\"\n", bus.name, grid.areas[bus.area].name);
+        let _ = write!(
+            out,
+            "\n[[bus]]\nname = \"{}\"\narea = \"{}\"\n",
+            bus.name, grid.areas[bus.area].name
+        );
         if bus.load_mw > 0.0 {
             let _ = writeln!(out, "load_mw = {:?}", bus.load_mw);
         }

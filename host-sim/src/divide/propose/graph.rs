@@ -104,7 +104,11 @@ impl Weighted {
     }
 
     /// Components of the nodes that `inside` admits, largest first.
-    pub(super) fn pieces(&self, nodes: &[usize], inside: &dyn Fn(usize) -> bool) -> Vec<Vec<usize>> {
+    pub(super) fn pieces(
+        &self,
+        nodes: &[usize],
+        inside: &dyn Fn(usize) -> bool,
+    ) -> Vec<Vec<usize>> {
         let mut seen = vec![false; self.len()];
         let mut pieces: Vec<Vec<usize>> = Vec::new();
         for &start in nodes.iter().filter(|&&node| inside(node)) {

@@ -95,13 +95,16 @@ fn best_move(graph: &Weighted, area: &[usize], totals: &Totals, node: usize) -> 
             .map(|edge| edge.weight / graph.weight + TIE_PRICE * edge.lines / graph.lines)
             .sum()
     };
-    let leave = totals.cost(graph, own, node, -1.0) - totals.cost(graph, own, node, 0.0) + pull(own);
+    let leave =
+        totals.cost(graph, own, node, -1.0) - totals.cost(graph, own, node, 0.0) + pull(own);
     let mut targets: Vec<usize> =
         graph.around[node].iter().map(|edge| area[edge.to]).filter(|&a| a != own).collect();
     targets.sort_unstable();
     targets.dedup();
     let change = |target: usize| {
-        leave + totals.cost(graph, target, node, 1.0) - totals.cost(graph, target, node, 0.0) - pull(target)
+        leave + totals.cost(graph, target, node, 1.0)
+            - totals.cost(graph, target, node, 0.0)
+            - pull(target)
     };
     let best = targets.into_iter().min_by(|&a, &b| change(a).total_cmp(&change(b)))?;
     (change(best) < -1e-9 && stays_whole(graph, area, node)).then_some(best)

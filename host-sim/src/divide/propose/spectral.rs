@@ -79,8 +79,9 @@ fn cheapest(graph: &Weighted, ordered: &[usize], share: f64) -> (usize, f64) {
         for edge in graph.around[node].iter().filter(|edge| member[edge.to]) {
             cut += if inside[edge.to] { -edge.weight } else { edge.weight };
         }
-        let off = (taken / size / share - 1.0).abs().max(
-            ((size - taken) / size / (1.0 - share) - 1.0).abs());
+        let off = (taken / size / share - 1.0)
+            .abs()
+            .max(((size - taken) / size / (1.0 - share) - 1.0).abs());
         if off < nearest.1 {
             nearest = (place + 1, off);
         }
@@ -113,9 +114,9 @@ fn fiedler(graph: &Weighted, nodes: &[usize]) -> Vec<f64> {
     else {
         return by_order();
     };
-    let factors = SymbolicLlt::try_new(matrix.symbolic(), Side::Lower)
-        .ok()
-        .and_then(|symbolic| Llt::try_new_with_symbolic(symbolic, matrix.as_ref(), Side::Lower).ok());
+    let factors = SymbolicLlt::try_new(matrix.symbolic(), Side::Lower).ok().and_then(|symbolic| {
+        Llt::try_new_with_symbolic(symbolic, matrix.as_ref(), Side::Lower).ok()
+    });
     match factors {
         Some(factors) => iterate(&factors, &degree),
         None => by_order(),
