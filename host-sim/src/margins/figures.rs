@@ -48,7 +48,7 @@ pub struct Document {
 }
 
 /// What recommendations rest on, in a sentence.
-pub const RECOMMENDED_HOW: &str = "The tick is half of its margin, rounded down to 1, 2 or 5 times a power of ten; the iterations are twice the least that every seed kept at the play's tick.";
+pub const RECOMMENDED_HOW: &str = "The tick is half of its margin, rounded down to 1, 2 or 5 times a power of ten; the iterations are twice the least that every seed kept at the play's tick. Both are bounds for the end of this play: fewer iterations or a longer tick settle later.";
 
 /// Tick recommended from its margin.
 pub fn recommended_tick_s(margins: &[Margin]) -> Option<f64> {

@@ -69,21 +69,26 @@ fn factor_word(factor: Option<f64>) -> String {
     factor.map_or("ratings of the file".to_owned(), |f| format!("rating factor {f}"))
 }
 
+fn short_factor(factor: Option<f64>) -> String {
+    factor.map_or("file".to_owned(), |f| format!("x {f}"))
+}
+
 fn totals_table(totals: &[Totals]) -> Markup {
     html! {
         section {
             h2 { "Over all outages" }
-            table {
+            p.note { "With loss: share of outages with any load lost. Areas: mean number touched. Followed: lines that opened after the outage. Over rating: outages after which a line stays above it. Rungs: outages that end at keep / lean / stretch / shed." }
+            div style="overflow-x: auto" { table {
                 thead { tr {
                     th { "ratings" } th { "form" } th { "scheme" }
-                    th.num { "outages" } th.num { "with load lost" } th.num { "mean lost" } th.num { "worst lost" }
-                    th.num { "units moved" } th.num { "areas touched" } th.num { "lines followed" }
-                    th.num { "left over rating" } th.num { "keep/lean/stretch/shed" }
+                    th.num { "runs" } th.num { "with loss" } th.num { "mean lost" } th.num { "worst lost" }
+                    th.num { "units moved" } th.num { "areas" } th.num { "followed" }
+                    th.num { "over rating" } th.num { "rungs" }
                 } }
                 tbody {
                     @for t in totals {
                         tr {
-                            td { (factor_word(t.factor)) } td { (t.form.word()) } td { (t.scheme.word()) }
+                            td { (short_factor(t.factor)) } td { (t.form.word()) } td { (t.scheme.word()) }
                             td.num { (t.outages) }
                             td.num { (format!("{:.1} %", t.with_loss_percent)) }
                             td.num { (format!("{:.3} %", t.mean_lost_percent)) }
@@ -96,7 +101,7 @@ fn totals_table(totals: &[Totals]) -> Markup {
                         }
                     }
                 }
-            }
+            } }
         }
     }
 }
@@ -127,16 +132,20 @@ fn panel(d: &Document, factor: Option<f64>) -> String {
     let mut drawing = Drawing::default();
     let (x0, y0) = MARGIN;
     let x = |percent: f64| x0 + PLOT.0 * percent / most;
-    let y = |share: f64| y0 + PLOT.1 * (1.0 - share);
+    let share = |g: &&[Row]| g.iter().filter(|r| r.has_lost()).count() as f64 / g.len() as f64;
+    let highest = groups.iter().map(share).fold(0.0, f64::max);
+    // Up to the next eighth, so that few losses still show.
+    let top = ((8.0 * highest).ceil() / 8.0).max(0.125);
+    let y = |share: f64| y0 + PLOT.1 * (1.0 - share / top);
     drawing.text((x0, 20.0), Anchor::Start, 14.0, INK, &factor_word(factor));
-    for share in [0.0, 0.25, 0.5, 0.75, 1.0] {
+    for share in [0.0, 0.2, 0.4, 0.6, 0.8, 1.0].map(|part| part * top) {
         drawing.line((x0, y(share)), (x0 + PLOT.0, y(share)), HAIR, 1.0, "");
         drawing.text(
             (x0 - 6.0, y(share) + 4.0),
             Anchor::End,
             12.0,
             SLATE,
-            &format!("{:.0} %", 100.0 * share),
+            &format!("{:.1} %", 100.0 * share),
         );
     }
     let marks = ticks(0.0, most, 6);
@@ -159,10 +168,21 @@ fn panel(d: &Document, factor: Option<f64>) -> String {
         "load lost, share of demand",
     );
     for (place, group) in groups.iter().enumerate() {
-        drawing.curve(&exceedance(group, &x, &y), colour(place), 2.0, dash(place));
+        drawing.curve(
+            &exceedance(group, &x, &y),
+            colour(place),
+            2.0,
+            dash(place + 2 * (place / 10)),
+        );
         let at = y0 + 14.0 + 20.0 * place as f64;
         let left = x0 + PLOT.0 + 16.0;
-        drawing.line((left, at - 4.0), (left + 34.0, at - 4.0), colour(place), 2.0, dash(place));
+        drawing.line(
+            (left, at - 4.0),
+            (left + 34.0, at - 4.0),
+            colour(place),
+            2.0,
+            dash(place + 2 * (place / 10)),
+        );
         if let Some(r) = group.first() {
             drawing.text(
                 (left + 40.0, at),
@@ -206,7 +226,7 @@ fn worst_table(d: &Document, replay: &dyn Fn(&Row) -> String) -> Markup {
                 tbody {
                     @for r in worst(&d.rows, WORST) {
                         tr {
-                            th { (r.outage) } td { (factor_word(r.factor)) } td { (r.form.word()) } td { (r.scheme.word()) }
+                            th { (r.outage) } td { (short_factor(r.factor)) } td { (r.form.word()) } td { (r.scheme.word()) }
                             td.num { (format!("{:.1}", r.load_lost_mw)) }
                             td.num { (format!("{:.2} %", r.load_lost_percent())) }
                             td.num { (r.lines_followed) }
