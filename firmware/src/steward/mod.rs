@@ -112,6 +112,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     /// Boot with a charter; what was known before is forgotten.
     ///
     /// Errors: why the charter is refused; the steward then has none.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     pub fn load(&mut self, charter: &[u8]) -> Result<(), Refusal> {
         self.ready = false;
         self.plan.load(charter)?;
@@ -194,6 +196,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     }
 
     /// Move one tick on and say what must be said.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     pub fn tick(&mut self, tick: u32, say: &mut dyn FnMut(Say<'_>)) {
         if !self.ready {
             return;
@@ -243,6 +247,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     }
 
     /// Bring network, ties and units to the statuses that are believed; true when rows may have changed.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     fn follow_statuses(&mut self) -> bool {
         let strength = self.strength();
         let mut change = Change::None;
@@ -359,6 +365,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     }
 
     /// Solve the next tighter rung beside; true when it fits within tolerance.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     fn run_shadow(&mut self) -> bool {
         let schedule = self.schedules();
         let mut boxes = Boxes::new();
@@ -399,6 +407,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         };
     }
 
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     fn speak(&mut self, tick: u32, step: Option<Move>, say: &mut dyn FnMut(Say<'_>)) {
         if matches!(step, Some(Move::Down { .. } | Move::Exhausted)) {
             self.proofs = self.proofs.wrapping_add(1);
