@@ -117,6 +117,17 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     pub fn load(&mut self, charter: &[u8]) -> Result<(), Refusal> {
         self.ready = false;
         self.plan.load(charter)?;
+        self.forget();
+        self.rows.choose(&self.plan, &self.network, &self.tie_counts);
+        self.refresh_boxes();
+        self.rebuild();
+        self.ready = true;
+        Ok(())
+    }
+
+    /// Start from the plan; nothing heard, nothing learnt.
+    #[inline(never)]
+    fn forget(&mut self) {
         self.network.start(&self.plan);
         self.measured.start(&self.plan);
         self.missed_ticks = 0;
@@ -143,11 +154,6 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         self.judgement = Judgement::new();
         self.ladder = Ladder::new();
         self.verdict = Verdict::Blind;
-        self.rows.choose(&self.plan, &self.network, &self.tie_counts);
-        self.refresh_boxes();
-        self.rebuild();
-        self.ready = true;
-        Ok(())
     }
 
     /// Whether a charter is loaded.

@@ -25,7 +25,7 @@ const RX_CLEAR: u32 = 2;
 const INTERRUPT_ENABLE: usize = 0xE000_E100;
 
 /// Bytes of the ring.
-const ROOM: usize = 1024;
+const ROOM: usize = 256;
 
 /// Bytes between the interrupt, which writes, and the main loop, which reads.
 struct Ring {
