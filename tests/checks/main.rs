@@ -9,6 +9,7 @@ mod catalogue;
 mod closed39;
 mod codes;
 mod frequency;
+mod images;
 mod incident;
 mod mutation;
 mod optima;
