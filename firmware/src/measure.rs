@@ -234,6 +234,7 @@ impl<const R: usize> Estimate<R> {
     /// controlled, `ties` the same for each tie's flow; what does not count is part
     /// of the load.
     /// Cost: n^2 + lines flops.
+    #[inline(never)]
     pub fn update<const B: usize, const X: usize>(
         &mut self,
         plan: &Plan<B, X, R>,

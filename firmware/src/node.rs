@@ -151,6 +151,8 @@ impl<const B: usize, const X: usize, const R: usize, const W: usize, const C: us
     }
 
     /// Take in bytes from the wire; what must be answered waits for [`Self::answer`].
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     pub fn receive(&mut self, mut bytes: &[u8]) {
         let Self { steward, decoder, boot, address, key, ticked, peers, counts, .. } = self;
         let Some(key) = key else {
@@ -176,6 +178,8 @@ impl<const B: usize, const X: usize, const R: usize, const W: usize, const C: us
     }
 
     /// Hand out what the start-up conversation has to say, each with the address it is for.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     pub fn answer(&mut self, out: &mut dyn FnMut(u8, &[u8])) {
         let identity = self.identity.unwrap_or(UNKNOWN);
         for answer in self.boot.take_answers() {
@@ -198,6 +202,8 @@ impl<const B: usize, const X: usize, const R: usize, const W: usize, const C: us
     }
 
     /// Move one tick on; `out` gets every frame with the address it is for.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     pub fn tick(&mut self, tick: u32, out: &mut dyn FnMut(u8, &[u8])) {
         if self.phase() != Phase::Running {
             return;

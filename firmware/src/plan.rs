@@ -153,8 +153,9 @@ impl<const B: usize, const X: usize, const R: usize> Plan<B, X, R> {
         if settings_in_range(&header.settings) { Ok(()) } else { Err(Refusal::Range) }
     }
 
+    #[inline(never)]
     fn take_sensitivity(&mut self, reader: &mut CharterReader<'_>) -> Result<(), Refusal> {
-        self.sensitivity = zeros();
+        self.sensitivity.fill(0.0);
         let mut left = sensitivity_len(self.buses);
         for row in 1..self.buses {
             for col in 1..=row {

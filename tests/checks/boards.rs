@@ -298,7 +298,7 @@ fn run_cli(args: &[&str]) -> i32 {
 /// A child that benches, its emulators once all three run, and its output directory.
 fn benching_child(name: &str) -> (Child, Vec<u32>, std::path::PathBuf) {
     let out = std::env::temp_dir().join(format!("hedgerow-{name}-{}", std::process::id()));
-    let child = Command::new(std::env::current_exe().unwrap())
+    let mut child = Command::new(std::env::current_exe().unwrap())
         .args(["--exact", "boards::a_bench_in_a_child", "--ignored"])
         .env(CHILD_OUT, &out)
         .stdout(Stdio::null())
@@ -311,7 +311,8 @@ fn benching_child(name: &str) -> (Child, Vec<u32>, std::path::PathBuf) {
     let deadline = Instant::now() + Duration::from_secs(300);
     while Instant::now() < deadline {
         let entries = read(&book).map_or(0, |book| book.entries.len());
-        if entries > 1_000 {
+        // One that has ended will never get there.
+        if entries > 1_000 || child.try_wait().unwrap().is_some() {
             break;
         }
         std::thread::sleep(Duration::from_millis(50));

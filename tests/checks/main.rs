@@ -10,6 +10,7 @@ mod closed39;
 mod codes;
 mod divide;
 mod frequency;
+mod images;
 mod incident;
 mod margins;
 mod mutation;

@@ -89,6 +89,8 @@ impl<const X: usize, const R: usize> Default for Judgement<X, R> {
 
 impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     /// Try this tick's duals: (proven with all help, proven with what is delivered).
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     pub(super) fn judge(&mut self, clear: bool) -> (bool, bool) {
         let mut dual = [0.0; R];
         self.scaled.physical_dual(&self.main.y, &mut dual);
@@ -103,25 +105,36 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             return (false, false);
         }
         self.rows.errors(&self.plan, &self.estimate, &mut self.judgement.error);
-        let most = self.with_all_help();
-        let (between, theirs) = self.with_help_delivered();
+        let threshold = self.plan.settings.proof_threshold;
+        self.judge_with_all_help(&candidates);
+        let hard = self.judgement.proven > threshold;
         let stalled = self.is_agreement_stalled();
         let leaning = self.ladder.rung() != Rung::Keep && stalled;
-        let threshold = self.plan.settings.proof_threshold;
-        for candidate in &candidates {
+        // A proof that holds whatever comes is worth more; only without one is this kept.
+        let conditional = leaning && !hard && self.judge_help_delivered(&candidates, threshold);
+        (hard, conditional)
+    }
+
+    #[inline(never)]
+    fn judge_with_all_help(&mut self, candidates: &[[f32; R]]) {
+        let most = self.with_all_help();
+        for candidate in candidates {
             let proven = self.try_on(candidate, &most);
             self.judgement.proven = max(proven, self.judgement.proven);
         }
-        let hard = self.judgement.proven > threshold;
-        let mut conditional = false;
-        for candidate in candidates.iter().filter(|_| leaning && !hard) {
-            // A proof that holds whatever comes is worth more; only without one is this kept.
-            for boxes in [Some(&between), theirs.as_ref()].into_iter().flatten() {
-                conditional |= self.try_on(candidate, boxes) > threshold;
-            }
-        }
         self.drop_stale_dual(&most);
-        (hard, conditional)
+    }
+
+    #[inline(never)]
+    fn judge_help_delivered(&mut self, candidates: &[[f32; R]], threshold: f32) -> bool {
+        let (mut between, mut theirs) = (self.boxes.clone(), self.boxes.clone());
+        let steady = self.pin_to_help(&mut between, &mut theirs);
+        let mut proven = false;
+        for candidate in candidates {
+            proven |= self.try_on(candidate, &between) > threshold;
+            proven |= steady && self.try_on(candidate, &theirs) > threshold;
+        }
+        proven
     }
 
     /// Whether the two ends of the open ties have stopped coming closer.
@@ -141,6 +154,22 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
 
     /// Shortfall that a dual vector proves on some ranges; the strongest is kept as the proof.
     fn try_on(&mut self, dual: &[f32; R], boxes: &Boxes<X>) -> f32 {
+        let proven = self.proven(dual, boxes, &self.judgement.error);
+        let proof = &mut self.judgement.proof;
+        if proven > proof.shortfall {
+            // Field by field: no second proof on the stack.
+            proof.dual.copy_from_slice(dual);
+            proof.boxes.low.copy_from_slice(&boxes.low);
+            proof.boxes.high.copy_from_slice(&boxes.high);
+            proof.shortfall = proven;
+        }
+        proven
+    }
+
+    /// Shortfall that a dual vector proves on some ranges, the estimates being off by `error`.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
+    fn proven(&self, dual: &[f32; R], boxes: &Boxes<X>, error: &[f32; R]) -> f32 {
         let (mut column, mut magnitude) = ([0.0; X], [0.0; X]);
         self.rows.product(&self.plan, &self.network, dual, &mut column, &mut magnitude);
         // Only what is in use: the rounding bound must not depend on the build's capacity.
@@ -149,15 +178,10 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         let limits = Rows {
             low: head(&self.judgement.row_low, rows),
             high: head(&self.judgement.row_high, rows),
-            error: head(&self.judgement.error, rows),
+            error: head(error, rows),
         };
         let ranges = Ranges { low: head(&boxes.low, cols), high: head(&boxes.high, cols) };
-        let proven = shortfall(head(dual, rows), product, limits, ranges);
-        if proven > self.judgement.proof.shortfall {
-            let boxes = boxes.clone();
-            self.judgement.proof = Proof { dual: *dual, boxes, shortfall: proven };
-        }
-        proven
+        shortfall(head(dual, rows), product, limits, ranges)
     }
 
     /// Ranges of this rung with every tie that could be open counted as open.
@@ -175,12 +199,11 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     }
 
     /// Ranges narrowed to what the neighbours deliver: between the two ends'
-    /// values, and close to the neighbour's own value if that is steady.
-    fn with_help_delivered(&self) -> (Boxes<X>, Option<Boxes<X>>) {
+    /// values, and close to the neighbour's own value; true when that is steady.
+    fn pin_to_help(&self, middle: &mut Boxes<X>, theirs: &mut Boxes<X>) -> bool {
         let schedule = self.schedules();
         let view = self.view(&schedule);
         let settings = &self.plan.settings;
-        let (mut middle, mut theirs) = (self.boxes.clone(), self.boxes.clone());
         let mut steady = true;
         for (index, end) in self.ends.iter().enumerate().take(self.plan.ties.len()) {
             if !self.open.get(index).copied().unwrap_or(false) {
@@ -191,23 +214,22 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             };
             let (mean, half) = between(end.deviation(), said.deviation);
             let slack = half.map(|half| half + BETWEEN_SLACK);
-            view.pin_tie(index, mean, slack, &mut middle);
+            view.pin_tie(index, mean, slack, middle);
             let exact = [settings.proof_threshold; 2];
-            view.pin_tie(index, said.deviation, exact, &mut theirs);
+            view.pin_tie(index, said.deviation, exact, theirs);
             let [flow, _] = said.deviation;
             steady &= abs(flow - end.trend()) < STEADY;
         }
-        (middle, steady.then_some(theirs))
+        steady
     }
 
     /// The same for the shadow, whose ties stand still: no price drives its duals.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     pub(super) fn drop_stale_shadow(&mut self, boxes: &Boxes<X>) {
         let mut dual = [0.0; R];
         self.scaled.physical_dual(&self.shadow.y, &mut dual);
-        let kept = (self.judgement.error, self.judgement.proof.clone());
-        self.judgement.error = [0.0; R];
-        let plain = self.try_on(&dual, boxes);
-        (self.judgement.error, self.judgement.proof) = kept;
+        let plain = self.proven(&dual, boxes, &[0.0; R]);
         self.judgement.shadow_pause_ticks = self.judgement.shadow_pause_ticks.saturating_sub(1);
         let settings = &self.plan.settings;
         let large = max_abs(&self.shadow.y) > SHADOW_STALE_SHARE * settings.dual_clamp;
@@ -220,6 +242,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     /// After a long impossible spell the duals may be far out; without open ties
     /// (whose price may be what drives them) they are dropped once the rows are
     /// far from any proof.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     fn drop_stale_dual(&mut self, most: &Boxes<X>) {
         self.judgement.pause_ticks = self.judgement.pause_ticks.saturating_sub(1);
         let settings = self.plan.settings;
@@ -229,10 +253,7 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         }
         let mut dual = [0.0; R];
         self.scaled.physical_dual(&self.main.y, &mut dual);
-        let kept = (self.judgement.error, self.judgement.proof.clone());
-        self.judgement.error = [0.0; R];
-        let plain = self.try_on(&dual, most);
-        (self.judgement.error, self.judgement.proof) = kept;
+        let plain = self.proven(&dual, most, &[0.0; R]);
         if plain < STALE_SLACK {
             self.main.reset();
             self.judgement.pause_ticks = (STALE_PAUSE_S / settings.tick_s) as u16;

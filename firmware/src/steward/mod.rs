@@ -110,9 +110,22 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     /// Boot with a charter; what was known before is forgotten.
     ///
     /// Errors: why the charter is refused; the steward then has none.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     pub fn load(&mut self, charter: &[u8]) -> Result<(), Refusal> {
         self.ready = false;
         self.plan.load(charter)?;
+        self.forget();
+        self.rows.choose(&self.plan, &self.network, &self.tie_counts);
+        self.refresh_boxes();
+        self.rebuild();
+        self.ready = true;
+        Ok(())
+    }
+
+    /// Start from the plan; nothing heard, nothing learnt.
+    #[inline(never)]
+    fn forget(&mut self) {
         self.network.start(&self.plan);
         self.measured.start(&self.plan);
         self.estimate = Estimate::new();
@@ -138,11 +151,6 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         self.judgement = Judgement::new();
         self.ladder = Ladder::new();
         self.verdict = Verdict::Blind;
-        self.rows.choose(&self.plan, &self.network, &self.tie_counts);
-        self.refresh_boxes();
-        self.rebuild();
-        self.ready = true;
-        Ok(())
     }
 
     /// Whether a charter is loaded.
@@ -191,6 +199,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     }
 
     /// Move one tick on and say what must be said.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     pub fn tick(&mut self, tick: u32, say: &mut dyn FnMut(Say<'_>)) {
         if !self.ready {
             return;
@@ -240,6 +250,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     }
 
     /// Bring network, ties and units to the statuses that are believed; true when rows may have changed.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     fn follow_statuses(&mut self) -> bool {
         let strength = self.strength();
         let mut change = Change::None;
@@ -356,6 +368,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     }
 
     /// Solve the next tighter rung beside; true when it fits within tolerance.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     fn run_shadow(&mut self) -> bool {
         let schedule = self.schedules();
         let mut boxes = Boxes::new();
@@ -396,6 +410,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         };
     }
 
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     fn speak(&mut self, tick: u32, step: Option<Move>, say: &mut dyn FnMut(Say<'_>)) {
         if matches!(step, Some(Move::Down { .. } | Move::Exhausted)) {
             self.proofs = self.proofs.wrapping_add(1);

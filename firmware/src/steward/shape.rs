@@ -42,6 +42,8 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     }
 
     /// New rows or open columns: fill and scale again, keeping the physical duals.
+    // Not inlined: its temporaries must not lie on the stack of everything else.
+    #[inline(never)]
     pub(super) fn rebuild(&mut self) {
         let (mut main, mut shadow) = ([0.0; R], [0.0; R]);
         self.scaled.physical_dual(&self.main.y, &mut main);

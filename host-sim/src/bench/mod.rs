@@ -57,6 +57,14 @@ pub enum BenchError {
     /// It does not take part.
     #[error(transparent)]
     Talk(#[from] TalkError),
+    /// Its process ended in the start-up conversation.
+    #[error("{why}; its process ended ({how})")]
+    Ended {
+        /// Where the conversation broke off.
+        why: TalkError,
+        /// How it ended.
+        how: String,
+    },
     /// The play asks for what boards can not do.
     #[error(
         "the play puts link faults between plant and stewards too (plant_too): a board keeps time by its measurements and would lose it; use in-process nodes, or take that setting out"
@@ -70,7 +78,10 @@ impl BenchError {
         match self {
             BenchError::Talk(TalkError::Capacity { .. } | TalkError::Refused { .. }) => true,
             BenchError::PlantFaults => true,
-            BenchError::Image(_) | BenchError::Start(_) | BenchError::Talk(_) => false,
+            BenchError::Image(_)
+            | BenchError::Start(_)
+            | BenchError::Talk(_)
+            | BenchError::Ended { .. } => false,
         }
     }
 }

@@ -6,14 +6,14 @@ use super::node::{Core, LinkKind, NodeKind};
 use super::notes::Shared;
 use super::process::{Emulator, Start};
 use super::seat::BoardSeat;
-use super::talk::Talk;
+use super::talk::{Talk, TalkError};
 use super::twin::Twin;
-use super::wire::Wire;
+use super::wire::{Wire, WireError};
 use super::{BenchError, Setup};
 use crate::charter::Area;
 use crate::rehearsal::{Gone, InProcess, RehearsalError, Seat, SeatCounts, Source, Staff};
 use hedgerow_protocol::auth::{Key, REHEARSAL_KEY};
-use std::time::Duration;
+use std::time::{Duration, Instant};
 
 /// Fills the seats.
 pub struct Bencher {
@@ -67,7 +67,7 @@ impl Bencher {
         name: &str,
         core: Core,
         mut wire: Wire,
-        emulator: Option<Emulator>,
+        mut emulator: Option<Emulator>,
     ) -> Result<BoardSeat, BenchError> {
         let key = Key::new(&REHEARSAL_KEY);
         let mut told = Vec::new();
@@ -87,7 +87,17 @@ impl Bencher {
             board_boot: 0,
             show: &mut show,
         };
-        let greeting = talk.start(area, self.start_patience)?;
+        let greeting = talk.start(area, self.start_patience).map_err(|why| {
+            // Its link closes a moment before the process has ended.
+            let ended = emulator.as_mut().filter(|_| is_closed(&why)).and_then(|emulator| {
+                emulator.wait(Instant::now() + Duration::from_secs(1));
+                emulator.ending()
+            });
+            match ended {
+                Some(how) => BenchError::Ended { why, how },
+                None => why.into(),
+            }
+        })?;
         let (counter, board_boot) = (talk.counter, talk.board_boot);
         let twin = self.side_by_side.then(|| Twin::new(&key, &greeting, area.address(), &told));
         self.shared.borrow_mut().started(area.index, core, greeting);
@@ -110,6 +120,10 @@ impl Bencher {
             gone: false,
         })
     }
+}
+
+fn is_closed(why: &TalkError) -> bool {
+    matches!(why, TalkError::NoAnswer { why: WireError::Closed, .. })
 }
 
 impl Staff for Bencher {

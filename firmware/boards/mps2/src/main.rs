@@ -14,7 +14,7 @@ mod link;
 mod link;
 mod meter;
 mod pins;
-#[cfg_attr(feature = "uart", allow(dead_code))]
+#[allow(dead_code)] // the other link and the other bin use the rest
 mod semi;
 mod vectors;
 

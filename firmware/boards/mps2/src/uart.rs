@@ -25,7 +25,7 @@ const RX_CLEAR: u32 = 2;
 const INTERRUPT_ENABLE: usize = 0xE000_E100;
 
 /// Bytes of the ring.
-const ROOM: usize = 1024;
+const ROOM: usize = 256;
 
 /// Bytes between the interrupt, which writes, and the main loop, which reads.
 struct Ring {
@@ -56,7 +56,8 @@ fn set(register: usize, value: u32) {
 
 impl Ring {
     fn push(&self, byte: u8) -> bool {
-        let (written, read) = (self.written.load(Ordering::Relaxed), self.read.load(Ordering::Acquire));
+        let (written, read) =
+            (self.written.load(Ordering::Relaxed), self.read.load(Ordering::Acquire));
         if written.wrapping_sub(read) >= ROOM {
             return false;
         }
@@ -67,7 +68,8 @@ impl Ring {
     }
 
     fn pop(&self) -> Option<u8> {
-        let (written, read) = (self.written.load(Ordering::Acquire), self.read.load(Ordering::Relaxed));
+        let (written, read) =
+            (self.written.load(Ordering::Acquire), self.read.load(Ordering::Relaxed));
         if written == read {
             return None;
         }
@@ -78,7 +80,8 @@ impl Ring {
     }
 
     fn is_full(&self) -> bool {
-        let (written, read) = (self.written.load(Ordering::Relaxed), self.read.load(Ordering::Acquire));
+        let (written, read) =
+            (self.written.load(Ordering::Relaxed), self.read.load(Ordering::Acquire));
         written.wrapping_sub(read) >= ROOM
     }
 

@@ -38,9 +38,7 @@ const IDLE_MS: u32 = 1000;
 #[rp_pico::entry]
 fn main() -> ! {
     static NODE: ConstStaticCell<BoardNode> = ConstStaticCell::new(BoardNode::blank());
-    let (Some(mut pac), Some(node)) = (pac::Peripherals::take(), NODE.try_take()) else {
-        halt()
-    };
+    let (Some(mut pac), Some(node)) = (pac::Peripherals::take(), NODE.try_take()) else { halt() };
     let mut watchdog = Watchdog::new(pac.WATCHDOG);
     let Ok(clocks) = init_clocks_and_plls(
         XOSC_CRYSTAL_FREQ,
