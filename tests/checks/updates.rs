@@ -16,7 +16,7 @@ use hedgerow_firmware::network::CUT_DENOMINATOR;
 use hedgerow_firmware::steward::Steward;
 use hedgerow_protocol::message::Verdict;
 
-type Steward64 = Steward<64, 104, 112>;
+type Steward64 = Steward<64, 112, 112>;
 
 /// A steward, the plant around it and the time.
 struct Desk {
