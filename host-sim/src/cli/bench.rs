@@ -111,7 +111,8 @@ pub fn run(args: &Args) -> Result<Ending, Failure> {
     };
     let stop = stop_flag()?;
     let begun = begin_logbook(&dir)?;
-    let done = run_it(&grid, &play, &setup, begun, args.quiet, &stop)?;
+    let done = run_it(&grid, &play, &setup, begun, args.quiet, &stop)
+        .inspect_err(|_| forget_logbook(&dir))?;
     let judgement = judge(&grid, &play, &done.attended.recording);
     let written = write(&dir, &grid, &play, &done, &judgement)?;
     if let Some(why) = &done.logbook_error {
@@ -178,6 +179,13 @@ fn begin_logbook(dir: &Path) -> Result<Logbook, Failure> {
     let path = dir.join(LOGBOOK_FILE);
     let begun = std::fs::create_dir_all(dir).and_then(|()| Logbook::create(&path));
     begun.map_err(|e| Failure::Environment(format!("cannot write {}: {e}", path.display())))
+}
+
+/// Take an empty logbook away again: the run did not begin.
+fn forget_logbook(dir: &Path) {
+    // A directory that holds anything else stays; whatever fails is not worth a word.
+    let _gone = std::fs::remove_file(dir.join(LOGBOOK_FILE));
+    let _gone = std::fs::remove_dir(dir);
 }
 
 fn write(
