@@ -194,3 +194,13 @@ pub struct Recording {
     /// State at the end.
     pub end: FinalState,
 }
+
+/// Word of a rung.
+pub fn rung_word(rung: u8) -> &'static str {
+    match rung {
+        0 => "keep",
+        1 => "lean",
+        2 => "stretch",
+        _ => "shed",
+    }
+}

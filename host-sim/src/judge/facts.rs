@@ -5,6 +5,7 @@
 //! and the judgement's `not_judged` says so.
 
 use crate::case::model::FeederKind;
+use crate::record::rung_word;
 use crate::record::{Recording, Scheme};
 
 use super::setting::Setting;
@@ -165,10 +166,6 @@ fn ratings(setting: &Setting, found: &mut Found) {
             f.where_, f.worst
         )
     });
-}
-
-fn rung_word(rung: u8) -> &'static str {
-    crate::report::rung_word(rung)
 }
 
 fn rungs(setting: &Setting, reference: &Reference, found: &mut Found) {

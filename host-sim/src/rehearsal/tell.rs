@@ -2,7 +2,7 @@
 
 use crate::case::model::{Grid, Happening};
 
-pub use crate::report::rung_word;
+pub use crate::record::rung_word;
 
 /// What happens, in words, for events that are not the plant's to tell.
 pub fn sentence(grid: &Grid, what: &Happening) -> String {

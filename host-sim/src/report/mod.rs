@@ -29,6 +29,7 @@ use thiserror::Error;
 
 use crate::case::model::{Grid, Play};
 use crate::judge::Judgement;
+pub use crate::record::rung_word;
 use crate::record::{Recording, SaidVerdict, Scheme};
 
 /// A run, its judgement, and what the report needs beside them.
@@ -136,16 +137,6 @@ pub fn write_all(
         written.push(path);
     }
     Ok(written)
-}
-
-/// Word of a rung.
-pub fn rung_word(rung: u8) -> &'static str {
-    match rung {
-        0 => "keep",
-        1 => "lean",
-        2 => "stretch",
-        _ => "shed",
-    }
 }
 
 /// Word of a scheme, as on the command line.
