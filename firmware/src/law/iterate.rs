@@ -354,6 +354,12 @@ fn head_mut(values: &mut [f32], count: usize) -> &mut [f32] {
     values.get_mut(..count).unwrap_or_default()
 }
 
+impl<const X: usize, const R: usize> Default for Iterate<X, R> {
+    fn default() -> Self {
+        Self::new()
+    }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;

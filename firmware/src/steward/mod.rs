@@ -45,7 +45,6 @@ pub struct Steward<const B: usize, const X: usize, const R: usize> {
     ready: bool,
     network: Network<B, R>,
     measured: Measured<B, X, R>,
-    missed_ticks: u16,
     estimate: Estimate<R>,
     rows: Rows,
     tie_closed: [bool; TIES_MAX],
@@ -81,7 +80,6 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
             ready: false,
             network: Network::new(),
             measured: Measured::new(),
-            missed_ticks: 0,
             estimate: Estimate::new(),
             rows: Rows::new(),
             tie_closed: [false; TIES_MAX],
@@ -130,7 +128,6 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
     fn forget(&mut self) {
         self.network.start(&self.plan);
         self.measured.start(&self.plan);
-        self.missed_ticks = 0;
         self.estimate = Estimate::new();
         self.tie_closed = self.measured.tie_closed;
         self.tie_counts = self.tie_closed;
@@ -243,11 +240,11 @@ impl<const B: usize, const X: usize, const R: usize> Steward<B, X, R> {
         self.speak(tick, step, say);
     }
 
-    /// Readings that did not come get old.
+    /// Readings get old while no newer ones come; those of a delayed link stay usable
+    /// as long as they are no older than any reading may be.
     fn note_missing(&mut self, tick: u32) {
-        let fresh = self.measured.any && self.measured.tick == tick;
-        self.missed_ticks = if fresh { 0 } else { self.missed_ticks.saturating_add(1) };
-        if self.missed_ticks > u16::from(AGE_MAX) {
+        let age = tick.wrapping_sub(self.measured.tick) as i32;
+        if !self.measured.any || age > i32::from(AGE_MAX) {
             self.measured.age_out();
         }
     }

@@ -192,6 +192,6 @@ proptest! {
         let mut mixed = body[..cut.index(body.len())].to_vec();
         mixed.extend_from_slice(&bytes);
         let _either = Plan32::new().load(&sealed(&mixed));
-        let _either = Steward::<64, 104, 112>::new().load(&bytes);
+        let _either = Steward::<64, 112, 112>::new().load(&bytes);
     }
 }

@@ -63,7 +63,7 @@ proptest! {
         area.settings.climb_ticks = 20;
         let small = run::<16, 48, 40>(&area, seed);
         let middle = run::<32, 64, 64>(&area, seed);
-        let large = run::<64, 104, 112>(&area, seed);
+        let large = run::<64, 112, 112>(&area, seed);
         for (tick, ((a, b), c)) in small.iter().zip(&middle).zip(&large).enumerate() {
             prop_assert!(a.bytes == b.bytes, "16 and 32 differ at tick {tick}:\n{a:?}\n{b:?}");
             prop_assert!(b.bytes == c.bytes, "32 and 64 differ at tick {tick}:\n{b:?}\n{c:?}");

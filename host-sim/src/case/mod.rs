@@ -22,6 +22,7 @@ pub mod network;
 mod play_file;
 pub mod problems;
 pub mod starter;
+pub mod synthetic;
 mod tables;
 mod timeline;
 mod validate;

@@ -6,11 +6,14 @@
 
 pub mod bench;
 pub mod check;
+pub mod divide;
 pub mod fit;
 pub mod import;
+pub mod margins;
 pub mod new;
 mod progress;
 pub mod rehearse;
+pub mod sweep;
 
 use std::io::{IsTerminal, Write};
 
@@ -66,7 +69,13 @@ pub enum Command {
     Check(check::Args),
     /// Turn an IEEE Common Data Format file into a grid file.
     Import(import::Args),
-    /// Write a commented grid and play to start from.
+    /// Choose the tie lines to leave open so that the areas form a tree.
+    Divide(divide::Args),
+    /// Run every credible outage, at several loading levels, under several schemes.
+    Sweep(sweep::Args),
+    /// Find how far each imperfection can go before a play stops settling.
+    Margins(margins::Args),
+    /// Write a commented grid and play to start from, or a made-up grid.
     New(new::Args),
 }
 
@@ -80,6 +89,9 @@ pub fn run(cli: &Cli) -> Result<Ending, Failure> {
         Command::Fit(args) => fit::run(args),
         Command::Check(args) => check::run(args),
         Command::Import(args) => import::run(args),
+        Command::Divide(args) => divide::run(args),
+        Command::Sweep(args) => sweep::run(args),
+        Command::Margins(args) => margins::run(args),
         Command::New(args) => new::run(args),
     }
 }

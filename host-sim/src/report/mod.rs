@@ -16,7 +16,7 @@ mod lanes;
 pub mod map;
 pub mod picture;
 pub mod summary;
-mod svg;
+pub(crate) mod svg;
 
 #[cfg(test)]
 pub(crate) mod sample;

@@ -6,17 +6,17 @@
 use std::fmt::Write as _;
 
 /// Dark text.
-pub(super) const INK: &str = "#23302b";
+pub(crate) const INK: &str = "#23302b";
 /// Quiet text and axes.
-pub(super) const SLATE: &str = "#5b6b70";
+pub(crate) const SLATE: &str = "#5b6b70";
 /// Grid lines.
-pub(super) const HAIR: &str = "#dfe6e1";
+pub(crate) const HAIR: &str = "#dfe6e1";
 /// Beyond a limit.
-pub(super) const ALARM: &str = "#b3261e";
+pub(crate) const ALARM: &str = "#b3261e";
 /// Close to a limit.
-pub(super) const WARN: &str = "#b07a14";
+pub(crate) const WARN: &str = "#b07a14";
 /// Within limits.
-pub(super) const HEDGE: &str = "#3c7a52";
+pub(crate) const HEDGE: &str = "#3c7a52";
 
 /// Colours of areas and curves, told apart in grey too by `DASHES`.
 const COLOURS: [&str; 10] = [
@@ -28,17 +28,17 @@ const COLOURS: [&str; 10] = [
 const DASHES: [&str; 5] = ["", "7 3", "2 2.5", "10 3 2 3", "4 2 1 2"];
 
 /// Colour of the n-th thing.
-pub(super) fn colour(index: usize) -> &'static str {
+pub(crate) fn colour(index: usize) -> &'static str {
     COLOURS[index % COLOURS.len()]
 }
 
 /// Dash pattern of the n-th thing.
-pub(super) fn dash(index: usize) -> &'static str {
+pub(crate) fn dash(index: usize) -> &'static str {
     DASHES[index % DASHES.len()]
 }
 
 /// Text with the characters XML reserves written out.
-pub(super) fn escaped(text: &str) -> String {
+pub(crate) fn escaped(text: &str) -> String {
     let mut out = String::with_capacity(text.len());
     for c in text.chars() {
         match c {
@@ -55,13 +55,13 @@ pub(super) fn escaped(text: &str) -> String {
 
 /// A drawing under construction.
 #[derive(Clone, Debug, Default)]
-pub(super) struct Drawing {
+pub(crate) struct Drawing {
     body: String,
 }
 
 /// Where a text stands against its point.
 #[derive(Clone, Copy, Debug)]
-pub(super) enum Anchor {
+pub(crate) enum Anchor {
     Start,
     Middle,
     End,
@@ -69,13 +69,13 @@ pub(super) enum Anchor {
 
 impl Drawing {
     /// Add raw elements.
-    pub(super) fn raw(&mut self, element: &str) {
+    pub(crate) fn raw(&mut self, element: &str) {
         self.body.push_str(element);
         self.body.push('\n');
     }
 
     /// A straight line.
-    pub(super) fn line(
+    pub(crate) fn line(
         &mut self,
         from: (f64, f64),
         to: (f64, f64),
@@ -92,7 +92,7 @@ impl Drawing {
     }
 
     /// A polyline.
-    pub(super) fn curve(&mut self, points: &[(f64, f64)], colour: &str, width: f64, dash: &str) {
+    pub(crate) fn curve(&mut self, points: &[(f64, f64)], colour: &str, width: f64, dash: &str) {
         if points.is_empty() {
             return;
         }
@@ -108,7 +108,7 @@ impl Drawing {
     }
 
     /// A rectangle.
-    pub(super) fn rect(&mut self, at: (f64, f64), size: (f64, f64), fill: &str, more: &str) {
+    pub(crate) fn rect(&mut self, at: (f64, f64), size: (f64, f64), fill: &str, more: &str) {
         let ((x, y), (w, h)) = (at, size);
         let _ = writeln!(
             self.body,
@@ -117,7 +117,7 @@ impl Drawing {
     }
 
     /// A piece of text.
-    pub(super) fn text(
+    pub(crate) fn text(
         &mut self,
         at: (f64, f64),
         anchor: Anchor,
@@ -129,7 +129,7 @@ impl Drawing {
     }
 
     /// A piece of text with further attributes.
-    pub(super) fn styled_text(
+    pub(crate) fn styled_text(
         &mut self,
         at: (f64, f64),
         anchor: Anchor,
@@ -152,7 +152,7 @@ impl Drawing {
     }
 
     /// The finished drawing.
-    pub(super) fn finish(self, width: f64, height: f64, title: &str) -> String {
+    pub(crate) fn finish(self, width: f64, height: f64, title: &str) -> String {
         let title = escaped(title);
         format!(
             r#"<svg xmlns="http://www.w3.org/2000/svg" viewBox="0 0 {width:.0} {height:.0}" width="{width:.0}" height="{height:.0}" role="img" aria-label="{title}" font-family="system-ui, 'Segoe UI', 'DejaVu Sans', sans-serif">
@@ -172,7 +172,7 @@ fn dashed(dash: &str) -> String {
 }
 
 /// Round ticks that cover a range: step 1, 2 or 5 times a power of ten.
-pub(super) fn ticks(low: f64, high: f64, about: usize) -> Vec<f64> {
+pub(crate) fn ticks(low: f64, high: f64, about: usize) -> Vec<f64> {
     let span = high - low;
     if !(span.is_finite() && span > 0.0) {
         return vec![low];
@@ -187,7 +187,7 @@ pub(super) fn ticks(low: f64, high: f64, about: usize) -> Vec<f64> {
 }
 
 /// Decimals that tell neighbouring ticks apart.
-pub(super) fn decimals(ticks: &[f64]) -> usize {
+pub(crate) fn decimals(ticks: &[f64]) -> usize {
     match ticks {
         [a, b, ..] => (-(b - a).abs().log10().floor()).clamp(0.0, 6.0) as usize,
         _ => 1,
@@ -201,7 +201,7 @@ const UNSEEN_PX: f64 = 0.05;
 /// and level stretches to their ends.
 ///
 /// Not finite samples break nothing: they are left out.
-pub(super) fn reduced(points: impl Iterator<Item = (f64, f64)>) -> Vec<(f64, f64)> {
+pub(crate) fn reduced(points: impl Iterator<Item = (f64, f64)>) -> Vec<(f64, f64)> {
     let mut out: Vec<(f64, f64)> = Vec::new();
     let mut column: Vec<(f64, f64)> = Vec::new();
     for (x, y) in points.filter(|p| p.0.is_finite() && p.1.is_finite()) {
