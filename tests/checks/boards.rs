@@ -159,8 +159,7 @@ fn three_m4f_boards_run_at_least_eight_times_faster_than_real_time() {
 #[ignore = "needs the emulator: run tests/run"]
 fn m4f_ticks_without_a_rebuild_cost_the_same_instructions() {
     let _turn = turn();
-    // Down to the lowest rung, with proofs and rebuilds on the way.
-    let case = play("shed", 100.0);
+    let case = play("quillon", 60.0);
     let done = benched(&case, &setup(&case.0, Core::M4, LinkKind::Fifo, true));
     for board in &done.boards {
         let name = &case.0.areas[board.area].name;
