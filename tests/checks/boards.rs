@@ -159,8 +159,7 @@ fn three_m4f_boards_run_at_least_eight_times_faster_than_real_time() {
 #[ignore = "needs the emulator: run tests/run"]
 fn m4f_ticks_without_a_rebuild_cost_the_same_instructions() {
     let _turn = turn();
-    // Down to the lowest rung, with proofs and rebuilds on the way.
-    let case = play("shed", 100.0);
+    let case = play("quillon", 60.0);
     let done = benched(&case, &setup(&case.0, Core::M4, LinkKind::Fifo, true));
     for board in &done.boards {
         let name = &case.0.areas[board.area].name;
@@ -179,6 +178,15 @@ fn m4f_ticks_without_a_rebuild_cost_the_same_instructions() {
             plain.len()
         );
         assert!(plain.len() > 500, "{name}");
+        let odd = efforts().filter(|effort| {
+            effort.is_plain() && f64::from(effort.instructions) > 1.05 * f64::from(*low)
+        });
+        let odd: Vec<_> = odd.map(|effort| (effort.tick, effort.instructions)).collect();
+        println!(
+            "  above the least by 5 %: {} ticks, say {:?}",
+            odd.len(),
+            odd.iter().take(8).collect::<Vec<_>>()
+        );
         assert!(f64::from(*high) <= 1.05 * f64::from(*low), "{name}: {low} to {high}");
         assert!(worst <= 2 * high, "{name}: a rebuild takes {worst}, other ticks {high}");
         assert!(*high <= 1_000_000, "{name}: a whole tick takes {high}");

@@ -133,6 +133,8 @@ impl embedded_io::Read for Link {
                 count += 1;
             }
             set(CONTROL, ENABLED | RX_INTERRUPT);
+            // A byte that waited while the ring was full raises no interrupt any more.
+            cortex_m::interrupt::free(|_| UART0_RX());
             if count > 0 || into.is_empty() {
                 return Ok(count);
             }
