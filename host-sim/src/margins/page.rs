@@ -36,7 +36,7 @@ pub fn page(d: &Document, play: &Play) -> String {
                 main {
                     section.caution {
                         p { b { "What this is. " } "One imperfection at a time, everything else as in the play, for these seeds and in the lossless DC model: no voltage, reactive power, fault or angle stability. Kept means: frequency settled, no line above its rating beyond what the errors explain, no deeper rung and no more load shed than without the imperfection." }
-                        p { "Not varied: clock drift; a board that drifts is late, which the delay covers." }
+                        p { "Not varied: clock drift." }
                     }
                     (table(d))
                     section #picture { h2 { "Share of the range tried" } (PreEscaped(bars(d, play))) }
